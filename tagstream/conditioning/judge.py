@@ -1,0 +1,154 @@
+"""Tags in arrival order to good tags with channel and delay; jumps in time are found here."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tagstream.conditioning import kernels as k
+from tagstream.counters import Counters
+from tagstream.feeds import Arrivals
+from tagstream.settings import Channel, Settings
+from tagstream.units import TIME_LIMIT_PS
+
+EVERYWHERE = (-TIME_LIMIT_PS, TIME_LIMIT_PS)
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """Good tags in arrival order, delays added. `after_jump`: a gap lies just before them."""
+
+    times_ps: NDArray[np.int64]
+    channels: NDArray[np.uint8]
+    after_jump: bool
+
+
+class Judge:
+    """Decides each tag's fate from the tags before it; see `kernels.fill_judged`."""
+
+    def __init__(self, settings: Settings, counters: Counters) -> None:
+        self._counters = counters
+        self._slice_ps = settings.rolling.slice_ps
+        self._disorder_ps = settings.conditioning.max_disorder_ps
+        self._jump_ps = settings.conditioning.max_jump_ps
+        self._channel_of, self._delays_ps = channel_tables(settings.channels)
+        self._state = np.zeros(k.STATE_SIZE, np.int64)
+        self._pending_times = np.zeros(k.CONFIRMATIONS + 1, np.int64)
+        self._pending_inputs = np.zeros(k.CONFIRMATIONS + 1, np.int64)
+
+    @property
+    def pending(self) -> int:
+        """Tags that are far from all others and not yet believed."""
+        return int(self._state[k.PENDING])
+
+    @property
+    def watermark_ps(self) -> int | None:
+        """No good tag will come from before this raw time; None before the first tag."""
+        if not self._state[k.STARTED]:
+            return None
+        return int(self._state[k.LATEST]) - self._disorder_ps
+
+    def interval(self, piece: Arrivals) -> tuple[int, int]:
+        """The vouched interval of a piece in stream time; everything if there is none."""
+        if piece.begin_ps is None or piece.end_ps is None:
+            return EVERYWHERE
+        offset = int(self._state[k.OFFSET])
+        return piece.begin_ps + offset, piece.end_ps + offset
+
+    def judge(self, piece: Arrivals) -> Iterator[Judged]:
+        """The good tags of a piece, split where a jump in time was believed."""
+        vouched = piece.begin_ps is not None
+        interval = self.interval(piece)
+        times, inputs = piece.times_ps, piece.inputs
+        while True:
+            used, judged = self._run(times, inputs, interval)
+            yield judged
+            if self.pending <= k.CONFIRMATIONS:
+                break
+            times, inputs = times[used:], inputs[used:]
+            yield from self._confirmed(vouched)
+        if vouched and piece.complete and self.pending:
+            yield from self._confirmed(vouched)
+
+    def end(self) -> None:
+        """The feed has ended: what was never confirmed is dropped."""
+        self._drop_pending()
+
+    def _run(
+        self,
+        times: NDArray[np.int64],
+        inputs: NDArray[np.generic],
+        interval: tuple[int, int],
+        after_jump: bool = False,
+    ) -> tuple[int, Judged]:
+        room = times.size + k.CONFIRMATIONS + 1
+        out_times, out_channels = np.empty(room, np.int64), np.empty(room, np.uint8)
+        counts = np.zeros(k.COUNT_SIZE, np.int64)
+        limits = (self._disorder_ps, self._jump_ps, TIME_LIMIT_PS, *interval)
+        used = k.fill_judged(
+            times,
+            inputs,
+            np.array(limits, np.int64),
+            self._channel_of,
+            self._delays_ps,
+            self._state,
+            self._pending_times,
+            self._pending_inputs,
+            out_times,
+            out_channels,
+            counts,
+        )
+        for reason, slot in _REASONS.items():
+            self._counters.drop(reason, int(counts[slot]))
+        largest = int(self._state[k.DISORDER])
+        self._counters.largest_disorder_ps = max(self._counters.largest_disorder_ps, largest)
+        kept = int(counts[k.KEPT])
+        return used, Judged(out_times[:kept], out_channels[:kept], after_jump)
+
+    def _confirmed(self, vouched: bool) -> Iterator[Judged]:
+        """Take the pending tags as good: time jumped.
+
+        Forwards, tags may be missing in between, unless the source vouches for the interval.
+        Backwards, a new session of the source began: stream time goes on at the next slice. A
+        source that vouches for an interval cannot go back in it, so there the tags are late.
+        """
+        back = bool(self._state[k.PENDING_BACK])
+        if back and vouched:
+            self._drop_pending()
+            return
+        count = self.pending
+        times, inputs = self._pending_times[:count].copy(), self._pending_inputs[:count].copy()
+        if back:
+            next_slice = (int(self._state[k.LATEST]) // self._slice_ps + 1) * self._slice_ps
+            self._state[k.OFFSET] = next_slice - int(times.min())
+        self._state[k.STARTED] = 0
+        self._state[k.PENDING] = 0
+        _, judged = self._run(times, inputs, EVERYWHERE, after_jump=not vouched)
+        yield judged
+
+    def _drop_pending(self) -> None:
+        reason = "late" if self._state[k.PENDING_BACK] else "jump"
+        self._counters.drop(reason, self.pending)
+        self._state[k.PENDING] = 0
+
+
+_REASONS = {
+    "late": k.LATE,
+    "jump": k.JUMP,
+    "overflow": k.OVERFLOW,
+    "outside_interval": k.OUTSIDE,
+    "unlisted_input": k.UNLISTED,
+}
+
+
+def channel_tables(
+    channels: Mapping[str, Channel],
+) -> tuple[NDArray[np.uint8], NDArray[np.int64]]:
+    """Channel index by input number (uint8), and delay by channel (int64, ps)."""
+    channel_of = np.full(1 + max(c.input for c in channels.values()), k.UNLISTED_INPUT, np.uint8)
+    for index, channel in enumerate(channels.values()):
+        channel_of[channel.input] = index
+    return channel_of, np.array([c.delay_ps for c in channels.values()], np.int64)

@@ -1,0 +1,53 @@
+"""The cross-correlation of two arrays of times, with the kernel that runs use."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from tagstream.tallies.cross_correlation import lag_axis
+from tagstream.tallies.kernels import fill_pairs
+
+
+def cross_correlation(
+    start_ps: ArrayLike, stop_ps: ArrayLike, max_lag_ps: int, bin_ps: int
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Histogram of lag = stop - start over all pairs of a start and a stop.
+
+    start_ps, stop_ps: whole numbers of picoseconds, 1-D, non-decreasing. The same array given
+        twice is one channel: ordered pairs of distinct tags count, no tag with itself.
+    max_lag_ps: centre of the outermost bin, a multiple of `bin_ps`.
+
+    Returns (lag_ps, counts), int64, 2 max_lag / bin + 1 each: bin k holds the lags with
+    floor((2 lag + bin) / (2 bin)) = k; it is half-open, centred on k bin.
+    Raises TypeError for times that are not whole numbers, ValueError for times out of order or a
+    `max_lag_ps` that is no multiple of `bin_ps`.
+    """
+    if bin_ps <= 0 or max_lag_ps <= 0 or max_lag_ps % bin_ps:
+        raise ValueError(
+            f"max_lag_ps = {max_lag_ps} must be a positive multiple of bin_ps = {bin_ps}"
+        )
+    starts = _times("start_ps", start_ps)
+    stops = starts if stop_ps is start_ps else _times("stop_ps", stop_ps)
+    lags = lag_axis(int(max_lag_ps) // int(bin_ps), int(bin_ps))
+    counts = np.zeros(lags.size, np.int64)
+    fill_pairs(starts, stops, int(bin_ps), counts)
+    if stops is starts:
+        counts[lags.size // 2] -= starts.size  # each tag met itself
+    return lags, counts
+
+
+def _times(name: str, values: ArrayLike) -> NDArray[np.int64]:
+    array = np.asarray(values)
+    if array.ndim != 1:
+        raise ValueError(f"{name} has {array.ndim} dimensions; one is right")
+    if array.dtype.kind not in "iu" and array.size:
+        raise TypeError(f"{name} has dtype {array.dtype}; whole picoseconds (int64) are right")
+    if array.dtype.kind == "u" and array.size and int(array.max()) > np.iinfo(np.int64).max:
+        raise ValueError(f"{name} holds {int(array.max())}, beyond the 63 bits of a time")
+    times = np.ascontiguousarray(array, np.int64)
+    wrong = np.flatnonzero(times[1:] < times[:-1])
+    if wrong.size:
+        i = int(wrong[0]) + 1
+        raise ValueError(f"{name}[{i}] = {times[i]} is before {name}[{i - 1}] = {times[i - 1]}")
+    return times

@@ -1,0 +1,92 @@
+"""Stage 1, feeds: bytes to tags.
+
+A feed decodes; it does not order, delay, name or judge. It hands on tags as they arrived, in
+pieces of bounded size, with the intervals for which its source vouches. It knows nothing of
+channels' meaning or of who consumes.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from fractions import Fraction
+from importlib import import_module
+from typing import Any, Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+PIECE_TAGS = 1 << 18  # tags a feed hands on at a time: large for the kernels, small for memory
+
+
+@dataclass(frozen=True, slots=True)
+class Arrivals:
+    """A piece of the stream as decoded, in arrival order.
+
+    times_ps: int64, n, picoseconds since the origin of the feed; beyond 106 days it is
+        units.BEYOND_LIMIT_PS.
+    inputs: uint8 or uint16, n, the numbers of the inputs.
+    begin_ps, end_ps: the half-open interval of which the source vouches that all its tags are
+        here; both None when the source says nothing.
+    complete: this piece is the last of its interval (an interval may come in many pieces).
+    gap_before: tags may have been lost just before this piece.
+    lossy: tags of this interval itself were lost; all of it is a gap.
+    """
+
+    times_ps: NDArray[np.int64]
+    inputs: NDArray[Any]
+    begin_ps: int | None = None
+    end_ps: int | None = None
+    complete: bool = True
+    gap_before: bool = False
+    lossy: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class TimeBase:
+    """What the times of a feed mean.
+
+    tick: the native tick in ps. origin_ticks: the native count at stream time zero, None for
+    feeds whose source counts from zero. origin_utc: the wall time of the origin, ISO 8601, if known.
+    """
+
+    tick: Fraction
+    origin_ticks: int | None = None
+    origin_utc: str | None = None
+
+
+class Feed(Protocol):
+    """Where tags come from.
+
+    `pieces` yields Arrivals until the source ends; it raises InputError after it has yielded
+    what was good. `time_base` is valid once the first piece was yielded. `truth` is what a
+    simulation knows, else an empty dict. `progress` is the fraction of the source consumed so
+    far, or None when its length is unknown.
+    """
+
+    def pieces(self) -> Iterator[Arrivals]: ...
+
+    @property
+    def time_base(self) -> TimeBase: ...
+
+    @property
+    def truth(self) -> dict[str, Any]: ...
+
+    @property
+    def progress(self) -> float | None: ...
+
+
+# kind -> "module:class"; imported when built, so that a feed costs only those who use it.
+_KINDS = {
+    "recording": "tagstream.feeds.recorded:RecordingFeed",
+    "columns": "tagstream.feeds.columns:open_columns",
+    "records": "tagstream.feeds.records:RecordsFeed",
+    "simulation": "tagstream.feeds.simulated:SimulationFeed",
+}
+
+
+def build_feed(settings: Any, slice_ps: int) -> Feed:
+    """The feed for a [feed] section; the origin of its times is rounded down to a slice."""
+    module, name = _KINDS[settings.kind].split(":")
+    builder: Callable[[Any, int], Feed] = getattr(import_module(module), name)
+    return builder(settings, slice_ps)

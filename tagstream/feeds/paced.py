@@ -1,0 +1,85 @@
+"""A feed at the pace of its own clock, for rehearsals."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+
+from tagstream.feeds import Arrivals, Feed, TimeBase
+from tagstream.units import PS_PER_S
+
+STEP_S = 0.1  # pieces are cut so that none waits longer than this for its own last tag
+
+
+class PacedFeed:
+    """Hands on the pieces of another feed when their time has come.
+
+    pace: seconds of stream time per second of wall time. wait: sleeps for so many seconds;
+    may return early, and returns True when waiting makes no sense any more (a stop).
+    """
+
+    def __init__(
+        self,
+        feed: Feed,
+        pace: float,
+        wait: Callable[[float], bool],
+        clock: Callable[[], float] = time.monotonic,
+    ) -> None:
+        self._feed, self._pace, self._wait, self._clock = feed, pace, wait, clock
+
+    @property
+    def time_base(self) -> TimeBase:
+        return self._feed.time_base
+
+    @property
+    def truth(self) -> dict[str, Any]:
+        return self._feed.truth
+
+    @property
+    def progress(self) -> float | None:
+        return self._feed.progress
+
+    def pieces(self) -> Iterator[Arrivals]:
+        step_ps = int(STEP_S * self._pace * PS_PER_S)
+        first_ps: int | None = None
+        started = self._clock()
+        for whole in self._feed.pieces():
+            for piece in cut_by_time(whole, step_ps):
+                last_ps = _last_ps(piece)
+                if first_ps is None:
+                    first_ps = last_ps
+                due = started + (last_ps - first_ps) / PS_PER_S / self._pace
+                while (left := due - self._clock()) > 0:
+                    if self._wait(left):
+                        break
+                yield piece
+
+
+def cut_by_time(piece: Arrivals, step_ps: int) -> Iterator[Arrivals]:
+    """The same tags in the same order, in pieces whose latest time grows by at most a step."""
+    if piece.times_ps.size == 0:
+        yield piece
+        return
+    latest = np.maximum.accumulate(piece.times_ps)
+    begin = 0
+    while begin < latest.size:
+        limit = np.int64(int(latest[begin]) // step_ps * step_ps + step_ps)
+        end = max(int(np.searchsorted(latest, limit)), begin + 1)
+        yield replace(
+            piece,
+            times_ps=piece.times_ps[begin:end],
+            inputs=piece.inputs[begin:end],
+            complete=piece.complete and end == latest.size,
+            gap_before=piece.gap_before and begin == 0,
+        )
+        begin = end
+
+
+def _last_ps(piece: Arrivals) -> int:
+    if piece.times_ps.size:
+        return int(piece.times_ps.max())
+    return piece.end_ps or 0

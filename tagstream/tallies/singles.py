@@ -1,0 +1,55 @@
+"""Detections per channel, live time, and the periods of clock channels."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tagstream.block import Block
+from tagstream.tallies.kernels import fill_counts, fill_periods, fill_selected
+
+NONE = -1
+
+
+class Singles:
+    """The tally that every run has.
+
+    Sums: counts (n_channels), live_time_ps (), and by channel, filled for clocks alone,
+    period_sum_ps, period_count, missed_count (see kernels.fill_periods). A period belongs to the
+    slice of its later tag.
+    """
+
+    axes: Mapping[str, NDArray[Any]] = {}
+
+    def __init__(self, channels: int, clocks: Sequence[int]) -> None:
+        self._counts = np.zeros(channels, np.int64)
+        self._live_time_ps = 0
+        self._last = {clock: np.full(2, NONE, np.int64) for clock in clocks}
+        self._periods = np.zeros((channels, 3), np.int64)
+
+    def add(self, piece: Block) -> None:
+        first = int(np.searchsorted(piece.times_ps, np.int64(piece.begin_ps)))
+        fill_counts(piece.channels[first:], self._counts)
+        self._live_time_ps += piece.end_ps - piece.begin_ps
+        for clock, last in self._last.items():
+            if piece.opens:
+                last[:] = NONE
+            times = np.empty(piece.times_ps.size + 1, np.int64)
+            count = fill_selected(piece.times_ps, piece.channels, clock, times)
+            fill_periods(times[:count], last, self._periods[clock])
+
+    def take(self) -> dict[str, NDArray[Any]]:
+        sums = {
+            "counts": self._counts.copy(),
+            "live_time_ps": np.array(self._live_time_ps, np.int64),
+            "period_sum_ps": self._periods[:, 0].copy(),
+            "period_count": self._periods[:, 1].copy(),
+            "missed_count": self._periods[:, 2].copy(),
+        }
+        self._counts[:] = 0
+        self._periods[:] = 0
+        self._live_time_ps = 0
+        return sums

@@ -1,0 +1,115 @@
+"""Sums of slices: the last 10 s, the last minute, the whole run."""
+
+from __future__ import annotations
+
+from collections import deque
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tagstream.settings import Rolling
+from tagstream.tallies import Sums, added
+from tagstream.units import format_time
+
+
+@dataclass(frozen=True, slots=True)
+class SpanSums:
+    """What one span holds: [begin_ps, end_ps) and, by name of tally, its sums."""
+
+    name: str
+    begin_ps: int
+    end_ps: int
+    sums: Mapping[str, Sums]
+
+
+class Spans:
+    """Adds slices, in stream order, to all spans at once. Slices may be missing (gaps)."""
+
+    def __init__(self, rolling: Rolling) -> None:
+        self._slice_ps = rolling.slice_ps
+        self._windows = [
+            (format_time(span), _Window(*rolling.parts(span))) for span in rolling.spans_ps
+        ]
+        self._run: dict[str, dict[str, NDArray[Any]]] = {}
+        self._first_slice: int | None = None
+        self._last_slice = 0
+
+    def add(self, slice_index: int, sums: Mapping[str, Sums]) -> None:
+        """Add the sums of one slice, by name of tally."""
+        if self._first_slice is None:
+            self._first_slice = slice_index
+        self._last_slice = slice_index
+        for name, more in sums.items():
+            self._run[name] = added(self._run.get(name), more)
+        for _, window in self._windows:
+            window.add(slice_index, sums)
+
+    def __iter__(self) -> Iterator[SpanSums]:
+        """The run, then the spans in the order of the settings."""
+        first = self._first_slice or 0
+        end_ps = (self._last_slice + 1) * self._slice_ps
+        yield SpanSums("run", first * self._slice_ps, end_ps, self._run)
+        for name, window in self._windows:
+            begin = max(first, window.first_slice(self._last_slice))
+            yield SpanSums(name, begin * self._slice_ps, end_ps, window.totals())
+
+
+class _Window:
+    """The newest `count` parts, each of `each` slices on a fixed grid.
+
+    Integers are kept as running totals, adding the new and subtracting the old, which is exact;
+    the floating-point expected pairs are added anew from the parts, so that no error creeps in.
+    """
+
+    def __init__(self, count: int, each: int) -> None:
+        self._count, self._each = count, each
+        self._parts: deque[tuple[int, dict[str, dict[str, NDArray[Any]]]]] = deque()
+        self._totals: dict[str, dict[str, NDArray[Any]]] = {}
+
+    def first_slice(self, last_slice: int) -> int:
+        return (last_slice // self._each - self._count + 1) * self._each
+
+    def add(self, slice_index: int, sums: Mapping[str, Sums]) -> None:
+        part = slice_index // self._each
+        while self._parts and self._parts[0][0] <= part - self._count:
+            self._subtract(self._parts.popleft()[1])
+        same_part = bool(self._parts) and self._parts[-1][0] == part
+        before = self._parts.pop()[1] if same_part else {}
+        merged = {name: added(before.get(name), more) for name, more in sums.items()}
+        self._parts.append((part, {name: _narrow(more) for name, more in merged.items()}))
+        for name, more in sums.items():
+            self._totals[name] = added(self._totals.get(name), _integers(more))
+
+    def totals(self) -> dict[str, Sums]:
+        return {name: {**total, **self._floats(name)} for name, total in self._totals.items()}
+
+    def _subtract(self, part: Mapping[str, Sums]) -> None:
+        for name, old in part.items():
+            total = self._totals[name]
+            for key, value in _integers(old).items():
+                total[key] = np.asarray(total[key] - value.astype(np.int64))
+
+    def _floats(self, name: str) -> dict[str, NDArray[Any]]:
+        found: dict[str, NDArray[Any]] = {}
+        for _, part in self._parts:
+            for key, value in part[name].items():
+                if value.dtype.kind == "f":
+                    found[key] = np.asarray(found[key] + value) if key in found else value
+        return found
+
+
+def _integers(sums: Sums) -> dict[str, NDArray[Any]]:
+    return {key: value for key, value in sums.items() if value.dtype.kind != "f"}
+
+
+def _narrow(sums: Sums) -> dict[str, NDArray[Any]]:
+    """Arrays of counts in the narrowest unsigned type that holds them."""
+    return {
+        key: value.astype(np.min_scalar_type(value.max()))
+        if value.ndim and value.dtype.kind != "f"
+        else value
+        for key, value in sums.items()
+    }

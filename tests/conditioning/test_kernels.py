@@ -1,0 +1,38 @@
+"""The kernels of conditioning equal their slow twins."""
+
+from __future__ import annotations
+
+import numpy as np
+from hypothesis import given
+from hypothesis import strategies as st
+
+from tagstream.conditioning.kernels import fill_dead_time_cut, fill_ordered
+from tests import naive
+from tests.strategies import int64, tags
+
+
+@given(tags(), st.integers(0, 200))
+def test_insertion_sorts_stably_or_says_how_far_it_came(
+    events: list[tuple[int, int]], most_moves: int
+) -> None:
+    numbered = [(t, i % 256) for i, (t, _) in enumerate(events)]
+    times, marks = int64([t for t, _ in numbered]), np.array([m for _, m in numbered], np.uint8)
+    done = fill_ordered(times, marks, most_moves)
+    found = list(zip(times.tolist(), marks.tolist(), strict=True))
+    assert found[:done] == naive.ordered(numbered[:done])
+    assert found[done:] == numbered[done:]
+    assert done == len(events) or most_moves < len(events) ** 2
+
+
+@given(tags(span_ps=300), st.integers(0, 60), st.lists(st.integers(0, 50), min_size=3, max_size=3))
+def test_dead_time_in_two_pieces(
+    events: list[tuple[int, int]], cut: int, dead_times: list[int]
+) -> None:
+    events = sorted(events)
+    last, ever = np.zeros(3, np.int64), np.zeros(3, np.uint8)
+    found = []
+    for part in (events[:cut], events[cut:]):
+        times, channels = int64([t for t, _ in part]), np.array([c for _, c in part], np.uint8)
+        n = fill_dead_time_cut(times, channels, int64(dead_times), last, ever)
+        found += list(zip(times[:n].tolist(), channels[:n].tolist(), strict=True))
+    assert found == naive.without_dead_time(events, dead_times)
