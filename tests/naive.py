@@ -2,6 +2,10 @@
 
 from __future__ import annotations
 
+import csv
+import io
+from typing import Any
+
 
 def judged(
     tags: list[tuple[int, int]],
@@ -106,3 +110,59 @@ def periods(times: list[int]) -> tuple[int, int, int]:
 def pair_time(lag_ps: int, stretch: tuple[int, int], piece: tuple[int, int]) -> int:
     """Instants t of `piece` whose t - |lag| is still in `stretch`, counted one by one."""
     return sum(t - abs(lag_ps) >= stretch[0] for t in range(*piece))
+
+
+def groups(times: list[int], beyond_ps: int) -> list[tuple[int, list[int]]]:
+    """(smallest time, offsets after it) of groups of consecutive times, each below 2**32 wide."""
+    found: list[list[int]] = []
+    for time in times:
+        t = min(max(time, -beyond_ps), beyond_ps)
+        if found and max(*found[-1], t) - min(*found[-1], t) < 2**32:
+            found[-1].append(t)
+        else:
+            found.append([t])
+    return [(min(group), [t - min(group) for t in group]) for group in found]
+
+
+def times_of_groups(found: list[tuple[int, list[int]]], limit_ps: int) -> list[int]:
+    """Zero plus offset; past the limit, or with an offset past it, one more than the limit."""
+    times = [
+        offset if abs(offset) > limit_ps else zero + offset
+        for zero, offsets in found
+        for offset in offsets
+    ]
+    return [min(max(t, -limit_ps - 1), limit_ps + 1) for t in times]
+
+
+def bits(record: int, field: tuple[int, int]) -> int:
+    """The value of a bit field (first bit, number of bits)."""
+    return record >> field[0] & ((1 << field[1]) - 1)
+
+
+def decoded(data: bytes, layout: Any) -> tuple[list[tuple[int, int, bool]], bool]:
+    """((ticks, input, whether a gap came just before) of each tag, whether a gap came last)."""
+    tags: list[tuple[int, int, bool]] = []
+    epoch, gap = 0, False
+    for at in range(0, len(data) - layout.record_bytes + 1, layout.record_bytes):
+        record = int.from_bytes(data[at : at + layout.record_bytes], layout.byte_order)
+        matching = [
+            marker
+            for marker in layout.markers
+            if all(bits(record, (first, n)) == value for first, n, value in marker.conditions)
+        ]
+        if not matching:
+            tick = min(epoch + bits(record, layout.time_bits), 2**63 - 1)
+            tags.append((tick, bits(record, layout.channel_bits), gap))
+            gap = False
+        elif matching[0].means == "rollover":
+            count = 1 if matching[0].count is None else bits(record, matching[0].count)
+            epoch = min(epoch + count * (matching[0].step or 2 ** layout.time_bits[1]), 2**63 - 1)
+        elif matching[0].means == "gap":
+            gap = True
+    return tags, gap
+
+
+def csv_rows(text: str, time_column: str, channel_column: str) -> list[tuple[int, int]]:
+    """Two columns of a CSV text, by the reader of the standard library."""
+    rows = csv.DictReader(io.StringIO(text, newline=""))
+    return [(int(row[time_column]), int(row[channel_column])) for row in rows]

@@ -6,11 +6,12 @@ that cannot be made says why instead of giving a number.
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from importlib import import_module
 from math import nan
-from typing import Any, Literal, Protocol
+from typing import Any, Literal
 
 from numpy.typing import NDArray
 
@@ -53,15 +54,23 @@ def no_estimate(reason: str, *, level: float, method: str, unit: str) -> Estimat
     return Estimate(nan, nan, nan, level, method, unit, interval="none", reason=reason)
 
 
-class Estimator(Protocol):
+class Estimator(ABC):
     """Makes one estimate from the sums of one span: tally name -> sums.
 
     The tally of singles is always there under the name "channels": counts (n_channels),
     live_time_ps () and, of the channels used as clocks, period_sum_ps, period_count and
     missed_count (n_channels; intervals between neighbouring tags of one live stretch).
+    unit: of the value; "1" for a plain number.
     """
 
+    unit: str
+
+    @abstractmethod
     def __call__(self, sums: Mapping[str, Sums]) -> Estimate: ...
+
+    def with_profile(self, sums: Mapping[str, Sums]) -> Estimate:
+        """The same, with the arrays that show what it was made from."""
+        return self(sums)
 
 
 _KINDS = {

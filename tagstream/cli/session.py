@@ -1,0 +1,62 @@
+"""What `run` and `replay` show while a pipeline runs, and at its end."""
+
+from __future__ import annotations
+
+import json
+import sys
+from contextlib import nullcontext
+from typing import Any
+
+import click
+
+from tagstream.errors import TagstreamError
+from tagstream.launch import Plan, start
+from tagstream.pipeline import Pipeline
+from tagstream.service import StopRequest, run_to_end
+
+BAR_LENGTH = 1000  # steps of the progress bar, which shows a fraction
+
+
+def conduct(plan: Plan, as_json: bool) -> None:
+    """Run `plan` to its end; print where the results are and what they say.
+
+    Raises SystemExit with 128 + signal after a stop, and what the run raised.
+    """
+    stop = StopRequest()
+    stop.install()
+    for text in plan.loaded.warnings:
+        click.echo(f"warning: {text}", err=True)
+    pipeline, folder = start(plan, stop.wait)
+    if not as_json:
+        click.echo(f"results in {folder.path}")
+    try:
+        with _progress(pipeline) as bar:
+            run_to_end(pipeline, stop, lambda: _advance(bar, pipeline))
+    except TagstreamError:
+        _report(folder.path, as_json)
+        raise
+    _report(folder.path, as_json)
+    if stop.requested:
+        raise SystemExit(stop.exit_code)
+
+
+def _report(folder: Any, as_json: bool) -> None:
+    from tagstream.outputs.reader import open_run
+    from tagstream.table import as_json as run_as_json
+    from tagstream.table import format_run
+
+    run = open_run(folder)
+    click.echo(json.dumps(run_as_json(run), indent=2) if as_json else format_run(run))
+
+
+def _progress(pipeline: Pipeline) -> Any:
+    """A bar on a terminal, for a feed whose length is known."""
+    if pipeline.feed.progress is None or not sys.stderr.isatty():
+        return nullcontext()
+    return click.progressbar(length=BAR_LENGTH, label="replaying", file=sys.stderr)
+
+
+def _advance(bar: Any, pipeline: Pipeline) -> None:
+    if bar is not None:
+        done = int(BAR_LENGTH * (pipeline.feed.progress or 0.0))
+        bar.update(done - bar.pos)

@@ -1,0 +1,32 @@
+"""The verb `show`."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import click
+
+from tagstream.cli.options import json_option, run_argument
+
+
+@click.command()
+@run_argument
+@json_option
+@click.option(
+    "--health/--no-health",
+    default=False,
+    help="Exit with code 1 unless the run is going on or ended well.",
+)
+def command(run: Path, as_json: bool, health: bool) -> None:
+    """The estimates of RUN, live or finished: value, interval, method.
+
+    RUN is a run folder, or the link to the newest one.
+    """
+    from tagstream import table
+    from tagstream.outputs.reader import open_run
+
+    opened = open_run(run)
+    click.echo(json.dumps(table.as_json(opened), indent=2) if as_json else table.format_run(opened))
+    if health and opened.health["state"] not in ("running", "finished"):
+        raise SystemExit(1)

@@ -1,0 +1,76 @@
+"""g2 around zero lag under continuous light."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from tagstream.estimates import Estimate, Estimator, no_estimate
+from tagstream.estimates.intervals import Bounds, poisson_interval
+from tagstream.estimates.normalisation import expected_pairs, in_windows
+from tagstream.settings.measures import CrossCorrelation
+from tagstream.settings.measures import G2Zero as G2ZeroSettings
+from tagstream.tallies import Sums
+from tagstream.units import format_time
+
+
+class G2Zero(Estimator):
+    """Pairs in a window around zero lag over the pairs that independent light would give.
+
+    The window is a whole number m of bins: the largest that fits, -m/2 to m/2 - 1 when m is
+    even, as a coincidence window [-w/2, w/2) is.
+
+    With a signal fraction rho = S / (S + B), g2 = (C - (1 - rho^2)) / rho^2 takes uncorrelated
+    background out of the measured C (Brouri et al., Opt. Lett. 25, 1294 (2000)). Nothing is
+    clipped: a value below zero is shown, with a note.
+    """
+
+    unit = "1"
+
+    def __init__(
+        self,
+        settings: G2ZeroSettings,
+        channels: Mapping[str, int],
+        tallies: Mapping[str, Any],
+    ) -> None:
+        self._settings = settings
+        self._tally: CrossCorrelation = tallies[settings.tally]
+        self._width = (settings.window_ps or self._tally.bin_ps) // self._tally.bin_ps
+        self._first = np.array([self._tally.bins_each_side - self._width // 2], np.int64)
+        window = format_time(self._width * self._tally.bin_ps)
+        self._method = f"window {window} around zero lag; Poisson {settings.interval}"
+        self._method += f"; normalised by {self._tally.normalisation}"
+        if settings.signal_fraction is not None:
+            self._method += f"; background removed, signal fraction {settings.signal_fraction:g}"
+
+    def __call__(self, sums: Mapping[str, Sums]) -> Estimate:
+        tally, level = sums[self._tally.name], self._settings.level
+        counts = int(in_windows(tally["counts"], self._first, self._width)[0])
+        pairs = expected_pairs(tally, self._tally)
+        expected = float(in_windows(pairs, self._first, self._width)[0])
+        if expected <= 0:
+            reason = "no live time, or no counts in one of the channels"
+            return no_estimate(reason, level=level, method=self._method, unit=self.unit)
+        raw = poisson_interval(counts, level, self._settings.interval).times(1 / expected)
+        return self._corrected(counts, counts / expected, raw)
+
+    def _corrected(self, counts: int, measured: float, raw: Bounds) -> Estimate:
+        square = (self._settings.signal_fraction or 1.0) ** 2
+        value, lower, upper = ((c - (1 - square)) / square for c in (measured, *raw[:2]))
+        note = "below zero: more background was removed than was measured" if value < 0 else ""
+        return Estimate(
+            value,
+            lower,
+            upper,
+            self._settings.level,
+            self._method,
+            self.unit,
+            counts,
+            "upper-limit" if raw.upper_limit else "two-sided",
+            raw_value=measured,
+            raw_lower=raw.lower,
+            raw_upper=raw.upper,
+            note=note,
+        )

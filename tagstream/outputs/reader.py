@@ -1,0 +1,223 @@
+"""Reading a run, live or finished, without disturbing it.
+
+Every access reads anew, so a live run shows its current numbers. latest.h5 is opened without a
+lock and as a whole file; the history in SWMR mode.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from typing import Any, Generic, TypeVar
+
+import h5py
+import numpy as np
+from numpy.typing import NDArray
+
+from tagstream.errors import ResultsError
+from tagstream.estimates import Estimate
+from tagstream.outputs import layout as at
+from tagstream.outputs.folder import is_held
+from tagstream.units import PS_PER_S
+
+T = TypeVar("T")
+
+
+class Named(Mapping[str, T], Generic[T]):
+    """A mapping whose KeyError names what there is."""
+
+    def __init__(self, what: str, found: Mapping[str, T]) -> None:
+        self._what, self._found = what, dict(found)
+
+    def __getitem__(self, name: str) -> T:
+        if name not in self._found:
+            known = ", ".join(self._found) or "none"
+            raise KeyError(f"no {self._what} {name!r}; there are: {known}")
+        return self._found[name]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self._found)
+
+    def __len__(self) -> int:
+        return len(self._found)
+
+    def __repr__(self) -> str:
+        return f"<{self._what}: {', '.join(self._found) or 'none'}>"
+
+
+def open_run(path: str | Path) -> Run:
+    """The run in a folder; `path` may also be the link to the newest, or a latest.h5.
+
+    Raises ResultsError when there is no run.
+    """
+    folder = Path(path)
+    if folder.name == "latest.h5":
+        folder = folder.parent
+    if not (folder / "latest.h5").is_file():
+        raise ResultsError(f"{path}: no run: a folder that holds a latest.h5 would be right")
+    return Run(folder.resolve())
+
+
+class Run:
+    """A run folder. Attributes read the files at the moment they are used."""
+
+    def __init__(self, path: Path) -> None:
+        self.path = path
+
+    def __repr__(self) -> str:
+        return f"Run({str(self.path)!r})"
+
+    @property
+    def estimates(self) -> Named[Named[Estimate]]:
+        """name -> span -> Estimate: value, lower, upper, level, method, counts and so on."""
+        with self._latest() as entry:
+            group = entry[at.ESTIMATES]
+            return Named("estimate", {name: _estimates(group[name]) for name in group})
+
+    @property
+    def tallies(self) -> Named[Named[dict[str, NDArray[Any]]]]:
+        """name -> span -> arrays by name, as in latest.h5."""
+        found: dict[str, dict[str, dict[str, NDArray[Any]]]] = {}
+        with self._latest() as entry:
+            for name, group in entry.items():
+                if isinstance(group, h5py.Group) and "span" in group.attrs:
+                    span = group.attrs["span"]
+                    tally = name if span == "run" else name.removesuffix(f"_{at.span_suffix(span)}")
+                    arrays = {key: dataset[()] for key, dataset in group.items()}
+                    found.setdefault(tally, {})[span] = arrays
+        return Named("tally", {name: Named("span", spans) for name, spans in found.items()})
+
+    @property
+    def channels(self) -> Named[Named[dict[str, Any]]]:
+        """name -> span -> counts, rate_hz, live_time_s, live_time_ps."""
+        with self._latest() as entry:
+            group = entry[at.CHANNELS]
+            return Named("channel", {name: _per_span(group[name]) for name in group})
+
+    @property
+    def health(self) -> dict[str, Any]:
+        """Counters and state, by name."""
+        with self._latest() as entry:
+            return _scalars(entry[at.HEALTH])
+
+    @property
+    def truth(self) -> dict[str, Any]:
+        """What a simulation knows of its light; empty for other runs."""
+        with self._latest() as entry:
+            return _scalars(entry[at.TRUTH]) if at.TRUTH in entry else {}
+
+    @property
+    def about(self) -> dict[str, Any]:
+        """title, settings, start_time, updated_utc, end_time, run_uuid, tick and so on."""
+        with self._latest() as entry:
+            return _scalars(entry)
+
+    @property
+    def is_live(self) -> bool:
+        """Whether a process writes the run now."""
+        return is_held(self.path)
+
+    def profile(self, estimate: str) -> dict[str, NDArray[Any]]:
+        """What an estimate over the run was made from; empty if it keeps nothing."""
+        with self._latest() as entry:
+            group = entry[at.ESTIMATES][estimate]
+            if "profile" not in group:
+                return {}
+            return {name: dataset[()] for name, dataset in group["profile"].items()}
+
+    def history(self, estimate: str, span: str = "run") -> dict[str, NDArray[Any]]:
+        """Columns over the whole run, one entry per slice.
+
+        begin_ps, end_ps (int64), time_s (end of the slice, float64), live_time_ps (int64), utc
+        (Unix seconds of writing), value, lower, upper (float64; nan where there is no number).
+        Raises KeyError for an unknown estimate or span.
+        """
+        spans = self.estimates[estimate]
+        if span not in spans:
+            spans[span]  # raises with the names that there are
+        wanted = {c: at.number_column(estimate, span, c) for c in at.HISTORY_COLUMNS}
+        parts = [_history_part(file, wanted) for file in sorted(self.path.glob("history-*.h5"))]
+        if not parts:
+            raise ResultsError(f"{self.path}: no history-*.h5 in this run")
+        joined = {key: np.concatenate([part[key] for part in parts]) for key in parts[0]}
+        return {**joined, "time_s": joined["end_ps"] / PS_PER_S}
+
+    def _latest(self) -> _Entry:
+        return _Entry(self.path / "latest.h5")
+
+
+class _Entry:
+    """The entry of latest.h5, open for the time of a `with`."""
+
+    def __init__(self, path: Path) -> None:
+        self._path = path
+
+    def __enter__(self) -> h5py.Group:
+        try:
+            self._file = h5py.File(self._path, "r", locking=False)
+            return self._file[at.ENTRY]
+        except (OSError, KeyError) as error:
+            raise ResultsError(
+                f"{self._path}: not readable as results of a run: {error}"
+            ) from error
+
+    def __exit__(self, *_: object) -> None:
+        self._file.close()
+
+
+def _estimates(group: h5py.Group) -> Named[Estimate]:
+    numbers = {key: group[key][()] for key in (*at.ESTIMATE_NUMBERS, "counts")}
+    texts = {key: group[key].asstr()[()] for key in at.ESTIMATE_TEXTS}
+    unit = group["unit"].asstr()[()]
+    spans = group["spans"].asstr()[()]
+    return Named(
+        "span",
+        {
+            span: Estimate(
+                **{key: values[i].item() for key, values in numbers.items()},
+                **{key: str(values[i]) for key, values in texts.items()},
+                unit=unit,
+            )
+            for i, span in enumerate(spans)
+        },
+    )
+
+
+def _per_span(group: h5py.Group) -> Named[dict[str, Any]]:
+    spans = group["spans"].asstr()[()]
+    columns = {key: group[key][()] for key in group if key != "spans"}
+    return Named(
+        "span",
+        {
+            span: {key: values[i].item() for key, values in columns.items()}
+            for i, span in enumerate(spans)
+        },
+    )
+
+
+def _scalars(group: h5py.Group) -> dict[str, Any]:
+    found: dict[str, Any] = {}
+    for name, node in group.items():
+        if isinstance(node, h5py.Dataset) and node.shape == ():
+            text = h5py.check_string_dtype(node.dtype) is not None
+            found[name] = node.asstr()[()] if text else node[()].item()
+    return found
+
+
+def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[Any]]:
+    with h5py.File(path, "r", swmr=True, locking=False) as file:
+        integers, numbers = (file[at.ENTRY][n] for n in (at.HISTORY_INTEGERS, at.HISTORY_NUMBERS))
+        rows = min(integers.shape[0], numbers.shape[0])
+        columns = {name: i for i, name in enumerate(_names(integers))}
+        found = {
+            key: integers[:rows, columns[key]] for key in ("begin_ps", "end_ps", "live_time_ps")
+        }
+        columns = {name: i for i, name in enumerate(_names(numbers))}
+        for key, name in {"utc": "utc", **wanted}.items():
+            absent = np.full(rows, np.nan)
+            found[key] = numbers[:rows, columns[name]] if name in columns else absent
+        return found
+
+
+def _names(table: h5py.Dataset) -> list[str]:
+    return [name.decode() for name in table.attrs["columns"]]

@@ -1,0 +1,226 @@
+"""The five stages joined: one step takes one piece of the feed all the way to the sink.
+
+The only module that knows every stage. It has no threads and looks at no clock; slices and
+spans are cut in stream time.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping
+from enum import StrEnum
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tagstream.block import Block
+from tagstream.conditioning import Conditioner
+from tagstream.counters import Counters
+from tagstream.errors import InputError
+from tagstream.estimates import Estimate, build_estimator
+from tagstream.estimates.curves import g2_curves
+from tagstream.feeds import Feed
+from tagstream.outputs import Row, RunHeader, Sink, Snapshot, SpanView
+from tagstream.settings import Settings, rules
+from tagstream.settings.measures import CountRate, EstimateSettings, TallySettings
+from tagstream.tallies import Sums, build_tally
+from tagstream.tallies.singles import Singles
+from tagstream.tallies.slicer import cut_at_slices
+from tagstream.tallies.spans import Spans, SpanSums
+from tagstream.units import PS_PER_S, format_time
+
+SINGLES = "channels"  # the name of the tally of singles among the sums
+
+
+class State(StrEnum):
+    """What a run is doing, as its readers see it."""
+
+    STARTING = "starting"
+    RUNNING = "running"
+    FINISHED = "finished"
+    STOPPED = "stopped"
+    INPUT_BROKEN = "input_broken"
+    FAILED = "failed"
+
+
+class Pipeline:
+    """Settings, a feed and a sink, joined. Call `step` until it says no, then `finish`.
+
+    open_sink: makes the sink once the feed has shown what it is, so that a feed that cannot be
+    read leaves no empty run behind.
+    """
+
+    def __init__(
+        self, settings: Settings, settings_text: str, feed: Feed, open_sink: Callable[[RunHeader], Sink]
+    ) -> None:
+        self.settings = settings
+        self.feed = feed
+        self.counters = Counters()
+        self._pieces = feed.pieces()
+        self._next = next(self._pieces, None)
+        if self._next is None:
+            raise InputError("the feed holds no tags; a feed with at least one tag would be right")
+        index = settings.channel_index
+        tally_settings = {tally.name: tally for tally in settings.tallies}
+        clocks = {index[e.clock] for e in settings.estimates if getattr(e, "clock", None)}
+        self._conditioner = Conditioner(settings, self.counters)
+        self._tallies = {
+            SINGLES: Singles(len(index), sorted(clocks)),
+            **{name: build_tally(tally, index) for name, tally in tally_settings.items()},
+        }
+        self._estimators = {
+            estimate.name: build_estimator(_resolved(estimate, settings), index, tally_settings)
+            for estimate in settings.estimates
+        }
+        self._spans = Spans(settings.rolling)
+        self._slice: int | None = None
+        self._latest_arrival_ps = 0
+        self.sink = open_sink(self._header(settings_text))
+        self._warn_of_bins()
+
+    def step(self) -> bool:
+        """Take one piece of the feed all the way; False when there was none left.
+
+        Raises InputError when the feed breaks; what came before it has been taken.
+        """
+        piece = self._next
+        if piece is None:
+            return False
+        self._next = None  # should the feed break now, this piece is not taken twice
+        self._take(self._conditioner.push(piece))
+        if piece.times_ps.size:
+            self._latest_arrival_ps = int(piece.times_ps.max())
+        self._next = next(self._pieces, None)
+        return True
+
+    def finish(self, state: State, **fields: Any) -> None:
+        """Take what still waits for order, end the last slice and close the sink."""
+        self._take(self._conditioner.finish())
+        if self._slice is not None:
+            self._end_slice(self._slice)
+        self.sink.event("end", **self._health(state), **fields)
+        self.sink.close(self._snapshot(state))
+
+    def _take(self, blocks: Iterator[Block]) -> None:
+        slice_ps = self.settings.rolling.slice_ps
+        for block in blocks:
+            if block.opens and self.counters.gaps:
+                self.sink.event("gap", block.begin_ps, gaps=self.counters.gaps)
+            for index, piece in cut_at_slices(block, slice_ps):
+                if self._slice is not None and index != self._slice:
+                    self._end_slice(self._slice)
+                self._slice = index
+                for tally in self._tallies.values():
+                    tally.add(piece)
+                if piece.end_ps == (index + 1) * slice_ps:
+                    self._end_slice(index)
+
+    def _end_slice(self, index: int) -> None:
+        self._slice = None
+        sums = {name: tally.take() for name, tally in self._tallies.items()}
+        self._spans.add(index, sums)
+        singles, slice_ps = sums[SINGLES], self.settings.rolling.slice_ps
+        self.sink.add_row(
+            Row(
+                index,
+                index * slice_ps,
+                (index + 1) * slice_ps,
+                int(singles["live_time_ps"]),
+                singles["counts"],
+                self._estimates(list(self._spans)),
+            )
+        )
+        if self.sink.snapshot_due():
+            self.sink.replace_snapshot(self._snapshot(State.RUNNING))
+
+    def _estimates(
+        self, spans: list[SpanSums], profiles: bool = False
+    ) -> dict[str, tuple[Estimate, ...]]:
+        if not spans[0].sums:
+            return {}
+        return {
+            name: tuple(
+                (estimator.with_profile if profiles else estimator)(span.sums) for span in spans
+            )
+            for name, estimator in self._estimators.items()
+        }
+
+    def _snapshot(self, state: State) -> Snapshot:
+        spans = list(self._spans)
+        if not spans[0].sums:
+            spans = []
+        return Snapshot(
+            tuple(self._view(span) for span in spans),
+            self._estimates(spans, profiles=True) if spans else {},
+            self._health(state),
+        )
+
+    def _view(self, span: SpanSums) -> SpanView:
+        singles = span.sums[SINGLES]
+        tallies = {
+            tally.name: self._arrays(span.sums[tally.name], tally)
+            for tally in self.settings.tallies
+        }
+        live_time_ps = int(singles["live_time_ps"])
+        rates = _rates(singles["counts"], live_time_ps)
+        return SpanView(
+            span.name, span.begin_ps, span.end_ps, live_time_ps, singles["counts"], rates, tallies
+        )
+
+    def _arrays(self, sums: Sums, tally: TallySettings) -> Mapping[str, NDArray[Any]]:
+        return {**self._tallies[tally.name].axes, **sums, **g2_curves(sums, tally)}
+
+    def _health(self, state: State) -> dict[str, int | float | str]:
+        counters = self.counters
+        behind = self._latest_arrival_ps - (self._conditioner.live_end_ps or 0)
+        return {
+            "state": str(state),
+            "received": counters.received,
+            "kept": counters.kept,
+            **{f"dropped_{reason}": count for reason, count in counters.dropped.items()},
+            "in_flight": counters.in_flight,
+            "gaps": counters.gaps,
+            "gap_time_ps": counters.gap_time_ps,
+            "largest_disorder_ps": counters.largest_disorder_ps,
+            "backlog_blocks": 0,
+            "lag_behind_s": max(behind, 0) / PS_PER_S,
+            "last_tag_ps": self._conditioner.last_tag_ps or 0,
+        }
+
+    def _header(self, settings_text: str) -> RunHeader:
+        settings, base = self.settings, self.feed.time_base
+        return RunHeader(
+            title=settings.title,
+            settings_text=settings_text,
+            channels=tuple(settings.channels),
+            spans=tuple(span.name for span in self._spans),
+            tallies={t.name: {"kind": t.kind, "start": t.start, "stop": t.stop} for t in settings.tallies},
+            estimates={name: estimator.unit for name, estimator in self._estimators.items()},
+            slice_ps=settings.rolling.slice_ps,
+            tick=format_time(base.tick),
+            origin_ticks=base.origin_ticks,
+            origin_utc=base.origin_utc,
+            truth=self.feed.truth,
+        )
+
+    def _warn_of_bins(self) -> None:
+        """The tick of a recording is known only now; of other feeds `check` has told before."""
+        for tally in self.settings.tallies:
+            if text := rules.bin_warning(tally, self.feed.time_base.tick):
+                self.sink.event("warning", text=text)
+
+
+def _resolved(estimate: EstimateSettings, settings: Settings) -> EstimateSettings:
+    """The settings of an estimate with what other sections say about it written in."""
+    if isinstance(estimate, CountRate):
+        dead_time_ps = rules.resolved_dead_time(estimate, settings.channels)
+        return estimate.model_copy(update={"dead_time_ps": dead_time_ps})
+    return estimate
+
+
+def _rates(counts: NDArray[Any], live_time_ps: int) -> NDArray[np.float64]:
+    if live_time_ps == 0:
+        return np.full(counts.size, np.nan)
+    return np.asarray(counts / (live_time_ps / PS_PER_S))
+
+

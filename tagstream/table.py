@@ -1,0 +1,139 @@
+"""The numbers of a run as text for people and as plain data for scripts."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import asdict
+from datetime import UTC, datetime
+from math import floor, isfinite, log10
+from typing import Any
+
+from tagstream.estimates import Estimate
+from tagstream.outputs.reader import Run
+
+COLUMN = 26
+
+
+def format_run(run: Run) -> str:
+    """A text of about 100 columns: estimates by span, rates, what became of the tags, truth."""
+    estimates = run.estimates
+    lines = [*_head(run), ""]
+    for name, spans in estimates.items():
+        lines += [*_estimate_lines(name, dict(spans)), ""]
+    lines += [*_channel_lines(run), "", *_health_lines(run.health)]
+    if truth := run.truth:
+        width = max(map(len, truth))
+        lines += ["", "known truth of the simulation"]
+        lines += [f"  {name:<{width}}  {_short(value)}" for name, value in truth.items()]
+    return "\n".join(lines)
+
+
+def as_json(run: Run) -> dict[str, Any]:
+    """The same as plain data: not-a-numbers and infinities become None."""
+    return {
+        "run": str(run.path),
+        "live": run.is_live,
+        "about": run.about,
+        "estimates": {
+            name: {span: _plain(asdict(found)) for span, found in spans.items()}
+            for name, spans in run.estimates.items()
+        },
+        "channels": {
+            name: {span: _plain(found) for span, found in spans.items()}
+            for name, spans in run.channels.items()
+        },
+        "health": run.health,
+        "truth": run.truth,
+    }
+
+
+def format_estimate(found: Estimate) -> str:
+    """A value with its interval: "0.0412 +0.0006 -0.0006", "< 0.012", "-"."""
+    if found.interval == "none":
+        return "-"
+    unit = "" if found.unit == "1" else f" {found.unit}"
+    if found.interval == "upper-limit":
+        return f"< {_rounded(found.upper, found.upper)}{unit}"
+    up, down = found.upper - found.value, found.value - found.lower
+    step = min(part for part in (up, down, abs(found.value) or 1.0) if part > 0)
+    if not isfinite(up):
+        return f"{_rounded(found.value, step)} +inf -{_rounded(down, step)}{unit}"
+    value, plus, minus = (_rounded(part, step) for part in (found.value, up, down))
+    return f"{value} +{plus} -{minus}{unit}"
+
+
+def _head(run: Run) -> Iterator[str]:
+    about, state = run.about, run.health["state"]
+    yield f"{about.get('title') or run.path.name}: {state}"
+    yield str(run.path)
+    if "end_time" not in about:
+        updated = datetime.fromisoformat(about["updated_utc"])
+        age = (datetime.now(UTC) - updated).total_seconds()
+        holder = "a process writes it" if run.is_live else "no process writes it any more"
+        yield f"last written {_age(age)} ago; {holder}"
+
+
+def _estimate_lines(name: str, spans: Mapping[str, Estimate]) -> Iterator[str]:
+    yield name
+    for span, found in spans.items():
+        basis = found.reason or f"{found.counts} counts"
+        yield f"  {span:<10} {format_estimate(found):<{COLUMN}} {basis}"
+        if found.raw_value != found.value and found.interval != "none":
+            yield f"  {'':<10} {f'{found.raw_value:.6g}':<{COLUMN}} before corrections"
+        if found.note:
+            yield f"  {'':<10} ! {found.note}"
+    first = next(iter(spans.values()), None)
+    if first is not None:
+        yield f"  {first.level:.4g} interval; {first.method}"
+
+
+def _channel_lines(run: Run) -> Iterator[str]:
+    channels = run.channels
+    spans = list(next(iter(channels.values()), {}))
+    heads = [f"{f'{span}, counts/s':>18}" for span in spans]
+    yield f"{'channel':<16}{''.join(heads)}{'counts in the run':>20}"
+    for name, found in channels.items():
+        rates = [f"{found[span]['rate_hz']:>18.7g}" for span in spans]
+        total = f"{found['run']['counts']:>20}" if "run" in found else ""
+        yield f"{name:<16}{''.join(rates)}{total}"
+
+
+def _health_lines(health: Mapping[str, Any]) -> Iterator[str]:
+    if "received" not in health:
+        return
+    lost = {k.removeprefix("dropped_"): v for k, v in health.items() if k.startswith("dropped_")}
+    yield f"tags: received {health['received']} = kept {health['kept']} + dropped {sum(lost.values())}"
+    for reason, count in lost.items():
+        if count:
+            yield f"  dropped, {reason.replace('_', ' ')}: {count}"
+    yield f"gaps: {health['gaps']}, {health['gap_time_s']:.6g} s together"
+
+
+def _rounded(value: float, step: float) -> str:
+    """`value` with two digits of `step`."""
+    if not isfinite(value) or step <= 0 or not isfinite(step):
+        return f"{value:g}"
+    places = 1 - floor(log10(step))
+    if places > 12:
+        return f"{value:.3g}"
+    return f"{value:.{places}f}" if places > 0 else f"{round(value, places):.0f}"
+
+
+def _short(value: Any) -> str:
+    return f"{value:.6g}" if isinstance(value, float) else str(value)
+
+
+def _age(seconds: float) -> str:
+    for length, unit in ((86_400, "d"), (3_600, "h"), (60, "min")):
+        if seconds >= 2 * length:
+            return f"{seconds / length:.0f} {unit}"
+    return f"{max(seconds, 0):.0f} s"
+
+
+def _plain(found: Mapping[str, Any]) -> dict[str, Any]:
+    """Without arrays, and with None for what JSON cannot hold."""
+    return {
+        key: None if isinstance(value, float) and not isfinite(value) else value
+        for key, value in found.items()
+        if key != "profile"
+    }
