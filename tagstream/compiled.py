@@ -15,7 +15,7 @@ import stat
 import time
 from collections.abc import Callable
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import numba
 
@@ -64,7 +64,7 @@ def prepare_cache() -> Path | None:
     if not _private(root) or not _private(folder):
         return None
     _remove_old(root, keep=folder)
-    numba.config.CACHE_DIR = str(folder)
+    numba.config.CACHE_DIR = str(folder)  # type: ignore[attr-defined]  # set at run time
     return folder
 
 
@@ -82,5 +82,4 @@ CACHE_FOLDER = prepare_cache()
 
 def kernel(function: F) -> F:
     """Compile a kernel: integers and arrays only, no GIL, kept on disk when there is a place."""
-    compiled: F = numba.njit(nogil=True, cache=CACHE_FOLDER is not None)(function)
-    return compiled
+    return cast(F, numba.njit(nogil=True, cache=CACHE_FOLDER is not None)(function))

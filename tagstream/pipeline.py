@@ -22,7 +22,7 @@ from tagstream.estimates.curves import g2_curves
 from tagstream.feeds import Feed
 from tagstream.outputs import Row, RunHeader, Sink, Snapshot, SpanView
 from tagstream.settings import Settings, rules
-from tagstream.settings.measures import CountRate, EstimateSettings, TallySettings
+from tagstream.settings.measures import CountRate, EstimateSettings, G2ZeroPulsed, TallySettings
 from tagstream.tallies import Sums, build_tally
 from tagstream.tallies.singles import Singles
 from tagstream.tallies.slicer import cut_at_slices
@@ -51,7 +51,11 @@ class Pipeline:
     """
 
     def __init__(
-        self, settings: Settings, settings_text: str, feed: Feed, open_sink: Callable[[RunHeader], Sink]
+        self,
+        settings: Settings,
+        settings_text: str,
+        feed: Feed,
+        open_sink: Callable[[RunHeader], Sink],
     ) -> None:
         self.settings = settings
         self.feed = feed
@@ -62,7 +66,11 @@ class Pipeline:
             raise InputError("the feed holds no tags; a feed with at least one tag would be right")
         index = settings.channel_index
         tally_settings = {tally.name: tally for tally in settings.tallies}
-        clocks = {index[e.clock] for e in settings.estimates if getattr(e, "clock", None)}
+        clocks = {
+            index[e.clock]
+            for e in settings.estimates
+            if isinstance(e, G2ZeroPulsed) and e.clock is not None
+        }
         self._conditioner = Conditioner(settings, self.counters)
         self._tallies = {
             SINGLES: Singles(len(index), sorted(clocks)),
@@ -98,7 +106,7 @@ class Pipeline:
         self._take(self._conditioner.finish())
         if self._slice is not None:
             self._end_slice(self._slice)
-        self.sink.event("end", **self._health(state), **fields)
+        self.sink.event("end", None, **{**self._health(state), **fields})
         self.sink.close(self._snapshot(state))
 
     def _take(self, blocks: Iterator[Block]) -> None:
@@ -194,7 +202,9 @@ class Pipeline:
             settings_text=settings_text,
             channels=tuple(settings.channels),
             spans=tuple(span.name for span in self._spans),
-            tallies={t.name: {"kind": t.kind, "start": t.start, "stop": t.stop} for t in settings.tallies},
+            tallies={
+                t.name: {"kind": t.kind, "start": t.start, "stop": t.stop} for t in settings.tallies
+            },
             estimates={name: estimator.unit for name, estimator in self._estimators.items()},
             slice_ps=settings.rolling.slice_ps,
             tick=format_time(base.tick),
@@ -222,5 +232,3 @@ def _rates(counts: NDArray[Any], live_time_ps: int) -> NDArray[np.float64]:
     if live_time_ps == 0:
         return np.full(counts.size, np.nan)
     return np.asarray(counts / (live_time_ps / PS_PER_S))
-
-

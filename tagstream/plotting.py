@@ -20,7 +20,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-STYLE = {
+STYLE: dict[Any, Any] = {
     "figure.figsize": (7.2, 4.0),
     "figure.dpi": 150,
     "figure.constrained_layout.use": True,

@@ -367,6 +367,12 @@ _csvs = [
         "csv: UTF-16", _bytes("a.csv", "tick,channel\n1,2\n".encode("utf-16")), _CSV, ("no UTF-8",)
     ),
     HostileInput("csv: binary", _bytes("a.csv", bytes(range(256))), _CSV, ("does not name tick",)),
+    HostileInput(
+        "csv: carriage returns alone",
+        _bytes("a.csv", b"tick,channel\r1,2\r"),
+        _CSV,
+        ("does not name tick and channel",),
+    ),
     HostileInput("csv: Latin-1", _bytes("a.csv", b"Z\xe4hler,x\n"), _CSV, ("byte 1 is no UTF-8",)),
     HostileInput(
         "csv: endless first line", _bytes("a.csv", b"x" * (1 << 20)), _CSV, ("the first line",)

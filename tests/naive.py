@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import itertools
 from typing import Any
 
 
@@ -70,9 +71,7 @@ def without_dead_time(
     return kept
 
 
-def histogram(
-    starts: list[int], stops: list[int], bin_ps: int, bins_each_side: int
-) -> list[int]:
+def histogram(starts: list[int], stops: list[int], bin_ps: int, bins_each_side: int) -> list[int]:
     """Every pair, one by one: bin k holds floor((2 lag + bin) / (2 bin)) = k."""
     counts = [0] * (2 * bins_each_side + 1)
     for start in starts:
@@ -102,8 +101,8 @@ def channel_counts(channels: list[int], how_many: int) -> list[int]:
 
 def periods(times: list[int]) -> tuple[int, int, int]:
     """(sum of intervals, their number, how many exceed 1.5 times the one before)."""
-    intervals = [b - a for a, b in zip(times, times[1:], strict=False)]
-    pairs = zip(intervals, intervals[1:], strict=False)
+    intervals = [b - a for a, b in itertools.pairwise(times)]
+    pairs = itertools.pairwise(intervals)
     return sum(intervals), len(intervals), sum(2 * b > 3 * a for a, b in pairs)
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Iterator
 from typing import TypeVar
 
@@ -23,9 +24,7 @@ def tags(
     inputs: int = 3, most: int = 60, span_ps: int = 2_000
 ) -> st.SearchStrategy[list[tuple[int, int]]]:
     """(time, input) in any order."""
-    return st.lists(
-        st.tuples(st.integers(0, span_ps), st.integers(0, inputs - 1)), max_size=most
-    )
+    return st.lists(st.tuples(st.integers(0, span_ps), st.integers(0, inputs - 1)), max_size=most)
 
 
 def cuts(most: int = 6) -> st.SearchStrategy[list[float]]:
@@ -36,7 +35,7 @@ def cuts(most: int = 6) -> st.SearchStrategy[list[float]]:
 def split(items: list[T], fractions: list[float]) -> Iterator[list[T]]:
     """`items` in pieces, some of them empty."""
     bounds = [0, *(int(f * len(items)) for f in fractions), len(items)]
-    for begin, end in zip(bounds, bounds[1:], strict=False):
+    for begin, end in itertools.pairwise(bounds):
         yield items[begin:end]
 
 

@@ -1,4 +1,4 @@
-"""`tagstream.cross_correlation`: equal to its twin, to a general library, and clear on bad input."""
+"""`tagstream.cross_correlation`: equal to its twin and to a general library; clear on bad input."""
 
 from __future__ import annotations
 

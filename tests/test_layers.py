@@ -32,8 +32,12 @@ def imports(path: Path) -> set[str]:
             found |= {node.module} | {f"{node.module}.{name.name}" for name in node.names}
         elif isinstance(node, ast.Import):
             found |= {name.name for name in node.names}
-    existing = {m for m in found if (PACKAGE.parent / m.replace(".", "/")).is_dir() or
-                (PACKAGE.parent / (m.replace(".", "/") + ".py")).exists()}
+    existing = {
+        m
+        for m in found
+        if (PACKAGE.parent / m.replace(".", "/")).is_dir()
+        or (PACKAGE.parent / (m.replace(".", "/") + ".py")).exists()
+    }
     return {m.removeprefix("tagstream.") for m in existing if m.startswith("tagstream.")}
 
 
@@ -47,7 +51,9 @@ def named(path: Path) -> str:
 
 
 @pytest.mark.parametrize("path", [p for p in MODULES if home(p) in STAGES], ids=named)
-def test_a_stage_knows_shared_modules_itself_and_the_records_of_the_stage_before(path: Path) -> None:
+def test_a_stage_knows_shared_modules_itself_and_the_records_of_the_stage_before(
+    path: Path,
+) -> None:
     stage = home(path)
     before = STAGES[STAGES.index(stage) - 1] if stage != STAGES[0] else None
     for module in imports(path):
@@ -62,9 +68,7 @@ def test_shared_modules_know_no_stage(path: Path) -> None:
 
 
 def test_the_pipeline_alone_knows_all_stages() -> None:
-    knows_all = {
-        named(p) for p in MODULES if set(STAGES) <= {m.split(".")[0] for m in imports(p)}
-    }
+    knows_all = {named(p) for p in MODULES if set(STAGES) <= {m.split(".")[0] for m in imports(p)}}
     assert knows_all == {"pipeline.py"}
 
 
@@ -87,8 +91,7 @@ def test_public_things_say_what_they_are(path: Path) -> None:
     tree = ast.parse(path.read_text())
     assert ast.get_docstring(tree), "module"
     for node in tree.body:
-        public = isinstance(node, ast.ClassDef | ast.FunctionDef) and not node.name.startswith("_")
-        if public:
+        if isinstance(node, ast.ClassDef | ast.FunctionDef) and not node.name.startswith("_"):
             assert ast.get_docstring(node), node.name
 
 

@@ -48,7 +48,14 @@ def test_a_formatted_tick_reads_back_the_same(tick: Fraction) -> None:
 
 
 @pytest.mark.parametrize(
-    ("ps", "text"), [(12_500, "12.5 ns"), (60 * 10**12, "1 min"), (Fraction(10**12, 8192), "1/8192 s"), (0, "0 ps"), (90 * 10**12, "90 s")]
+    ("ps", "text"),
+    [
+        (12_500, "12.5 ns"),
+        (60 * 10**12, "1 min"),
+        (Fraction(10**12, 8192), "1/8192 s"),
+        (0, "0 ps"),
+        (90 * 10**12, "90 s"),
+    ],
 )
 def test_times_are_shown_as_people_write_them(ps: Fraction, text: str) -> None:
     assert units.format_time(ps) == text

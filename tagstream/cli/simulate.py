@@ -12,14 +12,12 @@ from tagstream.cli.options import json_option
 from tagstream.units import PS_PER_S, parse_time
 
 
-class Duration(click.ParamType):
+class Duration(click.ParamType[int]):
     """A time with a unit, such as "20 s", in ps."""
 
     name = "time"
 
-    def convert(
-        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
-    ) -> int:
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> int:
         if isinstance(value, int):
             return value
         try:

@@ -117,9 +117,7 @@ def fill_judged(
 
 
 @kernel
-def fill_ordered(
-    times_ps: NDArray[np.int64], channels: NDArray[np.uint8], most_moves: int
-) -> int:
+def fill_ordered(times_ps: NDArray[np.int64], channels: NDArray[np.uint8], most_moves: int) -> int:
     """Sort tags in place by time, stably, by insertion; good for nearly ordered tags.
 
     times_ps, channels: n, rearranged. Gives up once more than `most_moves` moves were made and

@@ -90,5 +90,3 @@ def build_estimator(
     module, name = _KINDS[settings.kind].split(":")
     builder: Callable[..., Estimator] = getattr(import_module(module), name)
     return builder(settings, channels, tallies)
-
-

@@ -114,7 +114,9 @@ class G2ZeroPulsed(Estimator):
         if intervals == 0:
             return None, ""
         missed = int(singles["missed_count"][self._clock])
-        note = f"{missed} of {intervals} clock intervals are too long: tags of the clock are missing"
+        note = (
+            f"{missed} of {intervals} clock intervals are too long: tags of the clock are missing"
+        )
         period = Fraction(int(singles["period_sum_ps"][self._clock]), intervals)
         return period, note if missed else ""
 

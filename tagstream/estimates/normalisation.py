@@ -29,9 +29,7 @@ def expected_pairs(sums: Sums, tally: CrossCorrelation) -> NDArray[np.float64]:
     return np.asarray(per_ps * sums["pair_time_ps"], np.float64)
 
 
-def in_windows(
-    values: NDArray[Any], first_bins: NDArray[np.int64], width: int
-) -> NDArray[Any]:
+def in_windows(values: NDArray[Any], first_bins: NDArray[np.int64], width: int) -> NDArray[Any]:
     """Sums of `width` bins from each of `first_bins` on; a () array is the same in all bins."""
     if values.ndim == 0:
         return np.full(first_bins.size, values * width)

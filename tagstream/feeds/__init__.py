@@ -47,7 +47,8 @@ class TimeBase:
     """What the times of a feed mean.
 
     tick: the native tick in ps. origin_ticks: the native count at stream time zero, None for
-    feeds whose source counts from zero. origin_utc: the wall time of the origin, ISO 8601, if known.
+    feeds whose source counts from zero. origin_utc: the wall time of the origin, ISO 8601, if
+    known.
     """
 
     tick: Fraction

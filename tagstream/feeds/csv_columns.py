@@ -1,7 +1,8 @@
 """Two columns of a CSV file, by the names in its first line.
 
-The delimiter is the comma, semicolon or tab with which the first line has these names. Reading stops at the first
-broken line, which may be the last thing a killed program wrote; what follows it is not trusted.
+The delimiter is the comma, semicolon or tab with which the first line has these names. Reading
+stops at the first broken line, which may be the last thing a killed program wrote; what follows
+it is not trusted.
 """
 
 from __future__ import annotations
@@ -51,6 +52,8 @@ class CsvColumns:
     def _header(self, file: BufferedReader) -> str:
         line = file.readline(LONGEST_LINE)
         self._used, self._line = len(line), 1
+        if len(line) == LONGEST_LINE:
+            raise InputError(f"{self.path}: the first line is no line of column names")
         try:
             text = line.removeprefix(_BOM).decode("utf-8")
         except UnicodeDecodeError as error:
@@ -58,15 +61,13 @@ class CsvColumns:
                 f"{self.path}: byte {error.start} is no UTF-8; right would be text whose first"
                 " line names the columns"
             ) from None
-        if len(line) == LONGEST_LINE:
-            raise InputError(f"{self.path}: the first line is no line of column names")
         return text.rstrip("\r\n")
 
     def _shape(self, header: str) -> NDArray[np.int64]:
         """What `fill_rows` needs to know. Raises InputError unless both columns are there."""
         wanted = self._settings.time_column, self._settings.channel_column
         for delimiter in DELIMITERS:
-            names = [name.strip() for name in next(csv.reader([header], delimiter=delimiter), [])]
+            names = _names(header, delimiter)
             if all(names.count(name) == 1 for name in wanted):
                 columns = [names.index(name) for name in wanted]
                 return np.array([ord(delimiter), len(names), *columns], np.int64)
@@ -116,3 +117,10 @@ class CsvColumns:
             f" columns with whole numbers in {self._settings.time_column} and, from 0 to 65535, in"
             f" {self._settings.channel_column}"
         )
+
+
+def _names(header: str, delimiter: str) -> list[str]:
+    try:
+        return [name.strip() for name in next(csv.reader([header], delimiter=delimiter), [])]
+    except csv.Error:
+        return []

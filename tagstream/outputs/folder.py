@@ -55,9 +55,9 @@ class RunFolder:
                 f"{path}: written by {holder}; stop that process, or choose another name"
             ) from None
         started = datetime.now(UTC).isoformat(timespec="seconds")
-        holder = {"pid": os.getpid(), "host": socket.gethostname(), "since": started}
+        self = {"pid": os.getpid(), "host": socket.gethostname(), "since": started}
         os.ftruncate(lock, 0)
-        os.write(lock, json.dumps(holder).encode())
+        os.write(lock, json.dumps(self).encode())
         for leftover in path.glob("*.tmp"):
             leftover.unlink()
         return cls(path, lock)
@@ -107,13 +107,17 @@ def _make_next(parent: Path, name: str) -> Path:
             path = parent / f"{name}-{number:04d}"
             path.mkdir()
             return path
-    raise ResultsError(f"{parent}: {name}-{MOST_RUNS} exists already; choose another [results] name")
+    raise ResultsError(
+        f"{parent}: {name}-{MOST_RUNS} exists already; choose another [results] name"
+    )
 
 
 def _point(link: Path, path: Path) -> None:
     """Let `link` point to `path`, replacing an older link at once; leave other things alone."""
     if link.exists() and not link.is_symlink():
-        raise ResultsError(f"{link}: is no link to a run; choose another [results] name, or move it")
+        raise ResultsError(
+            f"{link}: is no link to a run; choose another [results] name, or move it"
+        )
     fresh = link.with_name(f".{path.name}.link")
     with contextlib.suppress(FileNotFoundError):
         fresh.unlink()

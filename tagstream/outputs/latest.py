@@ -21,9 +21,7 @@ TEXT = h5py.string_dtype("utf-8")
 Meta = Mapping[str, str | int]
 
 
-def latest_image(
-    header: RunHeader, meta: Meta, snapshot: Snapshot, recent: RecentValues
-) -> bytes:
+def latest_image(header: RunHeader, meta: Meta, snapshot: Snapshot, recent: RecentValues) -> bytes:
     """The content of latest.h5.
 
     meta: texts and integers that stand in /run as they are (start_time, run_uuid ...). recent:

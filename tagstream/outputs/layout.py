@@ -1,17 +1,17 @@
 """What stands where in latest.h5: units and meaning of every dataset. No HDF5 here.
 
-    /                             NXroot, default = "run"
-    /run                          NXentry; default = the first tally, else /run/estimates
-        title, start_time, end_time (at the end), program_name (version), settings
-        run_uuid, updated_utc, host, pid, tick, slice_ps, origin_ticks, origin_utc (if known)
-    /run/<tally>                  NXdata, span "run"; other spans /run/<tally>_<span>, as hbt_10s
-    /run/estimates/<estimate>     one entry per span in: spans, value, lower, upper, level, counts,
-        interval, method, reason, note, raw_value, raw_lower, raw_upper; unit
-        history                   NXdata: the value over the last hour, for the shortest span
-        profile                   NXdata: what the value of span "run" was made from
-    /run/channels/<channel>       per span: spans, counts, rate_hz, live_time_ps, live_time_s
-    /run/health                   counters and state, scalars
-    /run/truth                    what a simulation knows, scalars
+/                             NXroot, default = "run"
+/run                          NXentry; default = the first tally, else /run/estimates
+    title, start_time, end_time (at the end), program_name (version), settings
+    run_uuid, updated_utc, host, pid, tick, slice_ps, origin_ticks, origin_utc (if known)
+/run/<tally>                  NXdata, span "run"; other spans /run/<tally>_<span>, as hbt_10s
+/run/estimates/<estimate>     one entry per span in: spans, value, lower, upper, level, counts,
+    interval, method, reason, note, raw_value, raw_lower, raw_upper; unit
+    history                   NXdata: the value over the last hour, for the shortest span
+    profile                   NXdata: what the value of span "run" was made from
+/run/channels/<channel>       per span: spans, counts, rate_hz, live_time_ps, live_time_s
+/run/health                   counters and state, scalars
+/run/truth                    what a simulation knows, scalars
 """
 
 from __future__ import annotations
@@ -77,7 +77,10 @@ def integer_columns(channels: tuple[str, ...]) -> list[str]:
 
 def number_columns(estimates: tuple[str, ...], spans: tuple[str, ...]) -> list[str]:
     """Columns of the floating-point table of the history: utc in Unix seconds, then numbers."""
-    return ["utc", *(number_column(e, s, c) for e in estimates for s in spans for c in HISTORY_COLUMNS)]
+    return [
+        "utc",
+        *(number_column(e, s, c) for e in estimates for s in spans for c in HISTORY_COLUMNS),
+    ]
 
 
 def number_column(estimate: str, span: str, column: str) -> str:

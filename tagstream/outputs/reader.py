@@ -166,18 +166,16 @@ class _Entry:
 
 
 def _estimates(group: h5py.Group) -> Named[Estimate]:
-    numbers = {key: group[key][()] for key in (*at.ESTIMATE_NUMBERS, "counts")}
-    texts = {key: group[key].asstr()[()] for key in at.ESTIMATE_TEXTS}
+    columns: dict[str, list[Any]] = {
+        **{key: group[key][()].tolist() for key in (*at.ESTIMATE_NUMBERS, "counts")},
+        **{key: group[key].asstr()[()].tolist() for key in at.ESTIMATE_TEXTS},
+    }
     unit = group["unit"].asstr()[()]
     spans = group["spans"].asstr()[()]
     return Named(
         "span",
         {
-            span: Estimate(
-                **{key: values[i].item() for key, values in numbers.items()},
-                **{key: str(values[i]) for key, values in texts.items()},
-                unit=unit,
-            )
+            span: Estimate(unit=unit, **{key: values[i] for key, values in columns.items()})
             for i, span in enumerate(spans)
         },
     )

@@ -70,7 +70,7 @@ class Marker(Section):
         if self.count is not None:
             check_bits("count", self.count)
         if self.means != "rollover" and (self.count is not None or self.step is not None):
-            raise ValueError("`count` and `step` only where means = \"rollover\"")
+            raise ValueError('`count` and `step` only where means = "rollover"')
         return self
 
 
@@ -138,7 +138,7 @@ class TcpFeed(RecordLayout):
     @model_validator(mode="after")
     def _check_end(self) -> TcpFeed:
         if (self.listen is None) == (self.connect is None):
-            raise ValueError("either `listen` or `connect`, an address such as \"127.0.0.1:7700\"")
+            raise ValueError('either `listen` or `connect`, an address such as "127.0.0.1:7700"')
         return self
 
 
@@ -186,5 +186,3 @@ def check_interval(begin_ps: int | None, end_ps: int | None) -> None:
         raise ValueError("`begin` and `end` together, or neither")
     if begin_ps is not None and end_ps is not None and begin_ps >= end_ps:
         raise ValueError("`begin` before `end`")
-
-

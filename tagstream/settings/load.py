@@ -190,7 +190,9 @@ class _Sections:
 
 def _names(tables: Any) -> list[str]:
     """The names in a list of tables, also of those with problems of their own."""
-    found = [t.get("name") for t in tables if isinstance(t, dict)] if isinstance(tables, list) else []
+    found = (
+        [t.get("name") for t in tables if isinstance(t, dict)] if isinstance(tables, list) else []
+    )
     return [name for name in found if isinstance(name, str)]
 
 
@@ -202,7 +204,7 @@ def _where(key: str, number: int, table: Any) -> str:
 def _absolute(settings: Settings, base: Path) -> Settings:
     """Paths are relative to the settings file, not to the folder one happens to be in."""
     feed = settings.feed
-    changed = {
+    changed: dict[str, Any] = {
         key: base / Path(getattr(feed, key)).expanduser()
         for key in ("path", "scenario")
         if key in type(feed).model_fields

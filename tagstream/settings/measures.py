@@ -79,9 +79,9 @@ class G2ZeroPulsed(EstimateSection):
     period_ps: PeriodPs | None = Field(None, alias="period")
     clock: str | None = None
     window_ps: PositiveTimePs = Field(alias="window")
-    side_peaks: (
-        Annotated[int, Field(ge=1, strict=True)] | tuple[int, int]
-    ) = 8  # how many on each side, or [from, to]
+    side_peaks: Annotated[int, Field(ge=1, strict=True)] | tuple[int, int] = (
+        8  # how many on each side, or [from, to]
+    )
 
     @property
     def peak_range(self) -> tuple[int, int]:

@@ -39,7 +39,9 @@ def problems(parts: dict[str, Any]) -> Iterator[str]:
     tallies = {tally.name: tally for tally in parts["tallies"]}
     for tally in parts["tallies"]:
         for key in ("start", "stop"):
-            yield from _unknown(f"[[tally]] {tally.name} {key}", getattr(tally, key), names["channels"])
+            yield from _unknown(
+                f"[[tally]] {tally.name} {key}", getattr(tally, key), names["channels"]
+            )
     for estimate in parts["estimates"]:
         where = f"[[estimate]] {estimate.name}"
         if isinstance(estimate, CountRate):
@@ -140,10 +142,12 @@ def _g2_problems(
             f" {tally.name} ({format_time(tally.bin_ps)}) to its whole width ({format_time(reach)})"
         )
     if isinstance(estimate, G2ZeroPulsed) and estimate.period_ps is not None:
-        first, last = estimate.peak_range
+        _first, last = estimate.peak_range
         need = last * estimate.period_ps + Fraction(estimate.window_ps, 2)
         if need > Fraction(reach, 2):
-            fitting = int((Fraction(reach, 2) - Fraction(estimate.window_ps, 2)) / estimate.period_ps)
+            fitting = int(
+                (Fraction(reach, 2) - Fraction(estimate.window_ps, 2)) / estimate.period_ps
+            )
             yield (
                 f"{where} side_peaks: peak {last} ends at {format_time(need)}, beyond max_lag ="
                 f" {format_time(tally.max_lag_ps)} of {tally.name}; right would be at most"

@@ -66,7 +66,6 @@ class Rolling(Section):
             raise ValueError("each span once in `spans`")
         return self
 
-
     def parts(self, span_ps: int) -> tuple[int, int]:
         """(parts of a span, slices in each): at most 64, a long span advances by span / 60."""
         slices = span_ps // self.slice_ps

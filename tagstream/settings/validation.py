@@ -53,7 +53,9 @@ def validate_section(
         for detail in error.errors():
             found.setdefault(_key(detail["loc"]), []).append(dict(detail))
         for key, details in found.items():
-            problems.append(f"{file}: {where} {_sentence(model, key, details)}".replace(" : ", ": "))
+            problems.append(
+                f"{file}: {where} {_sentence(model, key, details)}".replace(" : ", ": ")
+            )
         return None
 
 
@@ -122,4 +124,4 @@ def _right(detail: dict[str, Any]) -> str:
         return "one of " + str(context["expected"]).replace("'", '"').replace(" or ", ", ")
     if kind == "string_pattern_mismatch":
         return f"a name that fits {context['pattern']}"
-    return _RIGHT.get(kind, detail["msg"])
+    return _RIGHT.get(kind, str(detail["msg"]))

@@ -51,7 +51,8 @@ class CrossCorrelation:
         self._counts = np.zeros(self._lags.size, np.int64)
         self._pair_time = PairTime(self._lags)
         self._start_counts = self._stop_counts = self._live_time_ps = 0
-        self._forget()
+        self._starts: NDArray[np.int64] = np.empty(0, np.int64)
+        self._stops: NDArray[np.int64] = np.empty(0, np.int64)
 
     @property
     def axes(self) -> Mapping[str, NDArray[Any]]:
@@ -106,10 +107,14 @@ class CrossCorrelation:
 
     def _keep_since(self, oldest_ps: int) -> None:
         """Keep the tags that a later one can still reach."""
-        first_start, first_stop = np.searchsorted(self._starts, oldest_ps), np.searchsorted(
-            self._stops, oldest_ps
+        first_start, first_stop = (
+            np.searchsorted(self._starts, oldest_ps),
+            np.searchsorted(self._stops, oldest_ps),
         )
-        self._starts, self._stops = self._starts[first_start:].copy(), self._stops[first_stop:].copy()
+        self._starts, self._stops = (
+            self._starts[first_start:].copy(),
+            self._stops[first_stop:].copy(),
+        )
 
     def _forget(self) -> None:
         self._starts = self._stops = np.empty(0, np.int64)

@@ -33,9 +33,7 @@ def conditioned(
     blocks += conditioner.finish()
     assert counters.in_flight == 0
     assert counters.arrived == counters.kept + sum(counters.dropped.values())
-    kept = [
-        (int(t), int(c)) for b in blocks for t, c in zip(b.times_ps, b.channels, strict=True)
-    ]
+    kept = [(int(t), int(c)) for b in blocks for t, c in zip(b.times_ps, b.channels, strict=True)]
     return blocks, kept, counters
 
 
@@ -198,9 +196,7 @@ def test_times_beyond_the_limit_are_counted_never_wrapped() -> None:
 
 
 @given(
-    st.lists(
-        st.tuples(st.sampled_from([0, 15 * S, 40 * S]), st.integers(0, 50)), max_size=80
-    ),
+    st.lists(st.tuples(st.sampled_from([0, 15 * S, 40 * S]), st.integers(0, 50)), max_size=80),
     cuts(),
 )
 def test_wild_times_have_one_fate_for_any_cut(

@@ -18,6 +18,4 @@ def opened(table: dict[str, Any], path: Path | None = None, slice_ps: int = PS_P
 
 def tags_of(pieces: list[Arrivals]) -> list[tuple[int, int]]:
     """(time, input) of all tags."""
-    return [
-        tag for p in pieces for tag in zip(p.times_ps.tolist(), p.inputs.tolist(), strict=True)
-    ]
+    return [tag for p in pieces for tag in zip(p.times_ps.tolist(), p.inputs.tolist(), strict=True)]

@@ -38,7 +38,7 @@ def call(capsys: pytest.CaptureFixture[str], *arguments: object) -> Outcome:
 
 def start(*arguments: object, **options: object) -> subprocess.Popen[str]:
     """`tagstream ARGUMENTS` in a process of its own."""
-    return subprocess.Popen(
+    process: subprocess.Popen[str] = subprocess.Popen(
         [sys.executable, "-m", "tagstream", *map(str, arguments)],
         cwd=ROOT,
         stdout=subprocess.PIPE,
@@ -46,3 +46,4 @@ def start(*arguments: object, **options: object) -> subprocess.Popen[str]:
         text=True,
         **options,  # type: ignore[call-overload]
     )
+    return process

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import tomllib
 from math import sqrt
-from typing import Any
+from typing import Any, ClassVar
 
 import pytest
 
@@ -29,7 +29,7 @@ S = 10**12
 class Scene:
     """A simulated feed of a scenario that is built once."""
 
-    truth: dict[str, Any] = {}
+    truth: ClassVar[dict[str, Any]] = {}
     progress = None
 
     def __init__(self, scenario: Scenario, seed: int, duration_ps: int) -> None:
@@ -47,7 +47,8 @@ def scenario(source: str) -> Scenario:
         'dead_time = "20 ns"\ndark_rate = "200 Hz"\n'
         for n, port in ((1, "transmitted"), (2, "reflected"))
     )
-    text = f'duration = "1 s"\n{source}\n[splitter]\ntransmittance = 0.55\nreflectance = 0.4\n{detectors}'
+    splitter = "[splitter]\ntransmittance = 0.55\nreflectance = 0.4"
+    text = f'duration = "1 s"\n{source}\n{splitter}\n{detectors}'
     return build_scenario(tomllib.loads(text), "coverage.toml")
 
 
@@ -67,9 +68,7 @@ def settings(estimate: dict[str, Any], max_lag: str, bin_: str) -> Settings:
     )
 
 
-def covered(
-    scene: Scenario, truth: float, chosen: Settings, duration_ps: int
-) -> tuple[int, float]:
+def covered(scene: Scenario, truth: float, chosen: Settings, duration_ps: int) -> tuple[int, float]:
     """(runs whose interval holds the truth, mean of the counts that the number rests on)."""
     hits, counts = 0, 0
     for seed in range(RUNS):

@@ -19,7 +19,7 @@ def integers(run: Path) -> dict[str, np.ndarray]:
     def take(name: str, node: h5py.Group | h5py.Dataset) -> None:
         tallied = name.startswith(("run/hbt", "run/estimates", "run/channels", "run/health"))
         if isinstance(node, h5py.Dataset) and tallied and not name.startswith(skipped):
-            found[name] = node[()]
+            found[name] = np.asarray(node[()])
 
     with h5py.File(run / "latest.h5") as file:
         file.visititems(take)
@@ -55,7 +55,7 @@ def test_the_size_of_pieces_changes_nothing(
     tags: int,
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
-    monkeypatch.setattr("tagstream.recording.reader.PIECE_EVENTS", tags)
+    monkeypatch.setattr("tagstream.recording.reader.CHUNK_EVENTS", tags)
     assert tagstream("replay", settings, recording, "--name", "pieces").code == 0
     assert_same(integers(settings.parent / "runs/pieces"), reference)
 

@@ -107,7 +107,8 @@ def test_all_problems_at_once(file: Path) -> None:
         "settings.toml: [[tally]] hbt: right would be `max_lag` a multiple of `bin`: nearest are"
         " 124950 ps, 125020 ps",
         'settings.toml: [[estimate]] g2_zero side_peak: unknown key; nearest known is "side_peaks"',
-        'settings.toml: [[estimate]] rate_a channel: there is no "arm_aa"; nearest known is "arm_a"',
+        'settings.toml: [[estimate]] rate_a channel: there is no "arm_aa";'
+        ' nearest known is "arm_a"',
     ]
     assert found == expected
 
@@ -128,7 +129,11 @@ def test_all_problems_at_once(file: Path) -> None:
         ('name = "hbt"', 'name = "Hbt"', ["hbt", "name that fits"]),
         ('dead_time = "45 ns"', "", ["rate_a dead_time_model", "a dead time is missing"]),
         ('path = "events.h5"', "", ["[feed] path", "missing"]),
-        ('max_disorder = "1 us"', 'max_disorder = "20 s"', ["[conditioning]", "at least", "max_jump"]),
+        (
+            'max_disorder = "1 us"',
+            'max_disorder = "20 s"',
+            ["[conditioning]", "at least", "max_jump"],
+        ),
         ("[results]", "[recording]\n[results]", ["[recording]", "does not record", "remove"]),
         ("[results]", "[results]\nevry = 3", ["[results] evry", "unknown key"]),
         ('name = "emitter-3"', 'name = "../x"', ["[results] name", "../x"]),
@@ -156,7 +161,9 @@ def test_memory_is_refused_above_its_limit(file: Path) -> None:
 
 def test_overrides_count_like_the_file(file: Path) -> None:
     file.write_text(GOOD)
-    loaded = load_settings(file, ('rolling.slice="2 s"', "tally.hbt.bin=500 ps", "channels.arm_b.input=7"))
+    loaded = load_settings(
+        file, ('rolling.slice="2 s"', "tally.hbt.bin=500 ps", "channels.arm_b.input=7")
+    )
     assert loaded.settings.rolling.slice_ps == 2 * 10**12
     assert loaded.settings.tallies[0].bin_ps == 500
     assert loaded.settings.channels["arm_b"].input == 7
@@ -191,7 +198,9 @@ def test_a_folder_is_no_settings_file(tmp_path: Path) -> None:
 
 
 def test_a_bin_on_tick_edges_is_warned_of_with_the_two_nearest(file: Path) -> None:
-    feed = 'kind = "columns"\npath = "e.csv"\ntime_column = "t"\nchannel_column = "c"\ntick = "4 ps"'
+    feed = (
+        'kind = "columns"\npath = "e.csv"\ntime_column = "t"\nchannel_column = "c"\ntick = "4 ps"'
+    )
     file.write_text(GOOD.replace('kind = "recording"\npath = "events.h5"', feed))
     bins = [text for text in load_settings(file).warnings if "bin" in text]
     # 100 ps is 25 ticks of 4 ps: odd, so fine; 80 ps is 20: even, nearest are 19 and 21.

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import itertools
+
 import numpy as np
 import pytest
 from hypothesis import given
@@ -23,7 +25,7 @@ def tally(stop: str = "b", bin_ps: int = 10, max_lag_ps: int = 200) -> CrossCorr
 
 
 def fed(counter: CrossCorrelation, events: list[tuple[int, int]], bounds: list[int]) -> None:
-    for i, (begin, end) in enumerate(zip(bounds, bounds[1:], strict=False)):
+    for i, (begin, end) in enumerate(itertools.pairwise(bounds)):
         counter.add(block([e for e in events if begin <= e[0] < end], begin, end, opens=i == 0))
 
 
@@ -65,7 +67,8 @@ def test_the_tag_that_opens_an_assumed_stretch_has_partners_but_is_not_counted()
     counter.add(block([(9, 0), (20, 1)], 10, 100, opens=True))
     sums = counter.take()
     assert sums["counts"].sum() == 1
-    assert (sums["start_counts"], sums["stop_counts"]) == (0, 1)
+    assert sums["start_counts"] == 0
+    assert sums["stop_counts"] == 1
 
 
 def test_two_tags_of_one_channel_at_one_time_are_two_ordered_pairs() -> None:

@@ -72,4 +72,4 @@ def test_periods_in_two_pieces(times: list[int], cut: int) -> None:
     last, sums = np.full(2, -1, np.int64), np.zeros(3, np.int64)
     fill_periods(int64(times[:cut]), last, sums)
     fill_periods(int64(times[cut:]), last, sums)
-    assert tuple(sums) == naive.periods(times)
+    assert tuple(sums.tolist()) == naive.periods(times)

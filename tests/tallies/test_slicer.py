@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import itertools
+
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -17,7 +19,7 @@ def test_pieces_join_to_the_block(times: list[int], slice_ps: int) -> None:
     assert [t for _, p in pieces for t in p.times_ps] == times
     assert pieces[0][1].begin_ps == 0
     assert pieces[-1][1].end_ps == 100
-    for (_, a), (_, b) in zip(pieces, pieces[1:], strict=False):
+    for (_, a), (_, b) in itertools.pairwise(pieces):
         assert a.end_ps == b.begin_ps
         assert not b.opens
     for index, piece in pieces:

@@ -41,9 +41,11 @@ def test_every_span_is_the_sum_of_its_slices(steps: list[tuple[int, int]]) -> No
                 if span.begin_ps <= i * 10**12 and (i + 1) * 10**12 <= span.end_ps
             ]
             held = span.sums["t"]
-            assert list(held["counts"]) == list(sum(s["counts"] for s in inside))
+            assert list(held["counts"]) == np.sum([s["counts"] for s in inside], axis=0).tolist()
             total = sum(s["pair_time_ps"] for s in inside)
-            assert np.array_equal(np.broadcast_to(held["pair_time_ps"], 3), np.broadcast_to(total, 3))
+            assert np.array_equal(
+                np.broadcast_to(held["pair_time_ps"], 3), np.broadcast_to(total, 3)
+            )
             expected = float(sum(s["expected_pairs"] for s in inside))
             assert float(held["expected_pairs"]) == pytest.approx(expected, abs=1e-9)
 
@@ -61,7 +63,9 @@ def test_a_long_span_advances_by_a_sixtieth() -> None:
     assert last_hour.sums["t"]["counts"][0] == 300 * (3_700 - 120)
 
 
-@pytest.mark.parametrize(("span", "parts"), [("64 s", (64, 1)), ("65 s", (32, 2)), ("101 s", (50, 2))])
+@pytest.mark.parametrize(
+    ("span", "parts"), [("64 s", (64, 1)), ("65 s", (32, 2)), ("101 s", (50, 2))]
+)
 def test_at_most_64_parts(span: str, parts: tuple[int, int]) -> None:
     made = rolling(span)
     assert made.parts(made.spans_ps[0]) == parts
