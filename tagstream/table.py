@@ -102,7 +102,8 @@ def _health_lines(health: Mapping[str, Any]) -> Iterator[str]:
     if "received" not in health:
         return
     lost = {k.removeprefix("dropped_"): v for k, v in health.items() if k.startswith("dropped_")}
-    yield f"tags: received {health['received']} = kept {health['kept']} + dropped {sum(lost.values())}"
+    received, kept, dropped = health["received"], health["kept"], sum(lost.values())
+    yield f"tags: received {received} = kept {kept} + dropped {dropped}"
     for reason, count in lost.items():
         if count:
             yield f"  dropped, {reason.replace('_', ' ')}: {count}"

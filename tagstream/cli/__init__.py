@@ -35,6 +35,13 @@ class LazyGroup(click.Group):
         command: click.Command = import_module(f"tagstream.cli.{cmd_name}").command
         return command
 
+    def invoke(self, ctx: click.Context) -> object:
+        try:
+            return super().invoke(ctx)
+        except BrokenPipeError:  # the reader of our output has seen enough
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            return 0
+
     def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
         with formatter.section("Verbs"):
             formatter.write_dl(list(VERBS.items()))
@@ -64,9 +71,6 @@ def main() -> None:
     except (click.Abort, KeyboardInterrupt):
         click.echo("stopped", err=True)
         sys.exit(130)
-    except BrokenPipeError:  # the reader of our output has seen enough
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        sys.exit(0)
 
 
 def _complain(error: TagstreamError) -> None:

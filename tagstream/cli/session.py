@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import sys
+import time
 from contextlib import nullcontext
 from typing import Any
 
@@ -26,6 +27,7 @@ def conduct(plan: Plan, as_json: bool) -> None:
     stop.install()
     for text in plan.loaded.warnings:
         click.echo(f"warning: {text}", err=True)
+    started = time.monotonic()
     pipeline, folder = start(plan, stop.wait)
     if not as_json:
         click.echo(f"results in {folder.path}")
@@ -35,6 +37,8 @@ def conduct(plan: Plan, as_json: bool) -> None:
     except TagstreamError:
         _report(folder.path, as_json)
         raise
+    if not as_json:
+        click.echo(_speed(pipeline.counters.received, time.monotonic() - started))
     _report(folder.path, as_json)
     if stop.requested:
         raise SystemExit(stop.exit_code)
@@ -47,6 +51,11 @@ def _report(folder: Any, as_json: bool) -> None:
 
     run = open_run(folder)
     click.echo(json.dumps(run_as_json(run), indent=2) if as_json else format_run(run))
+
+
+def _speed(tags: int, seconds: float) -> str:
+    rate = tags / seconds / 1e6
+    return f"{tags} tags in {seconds:.2f} s, {rate:.3g} million tags a second"
 
 
 def _progress(pipeline: Pipeline) -> Any:

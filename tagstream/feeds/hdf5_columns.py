@@ -9,7 +9,7 @@ import h5py
 from numpy.typing import NDArray
 
 from tagstream.errors import InputError
-from tagstream.recording.opening import children, get_node, open_hdf5, read_leading
+from tagstream.recording.opening import children, open_hdf5, read_leading, reporting_damage
 
 
 class Hdf5Pair:
@@ -21,7 +21,8 @@ class Hdf5Pair:
     def __init__(self, path: Path, time_path: str, channel_path: str) -> None:
         self._file = open_hdf5(path)
         try:
-            self._datasets = [self._dataset(path, name) for name in (time_path, channel_path)]
+            with reporting_damage(path):
+                self._datasets = [self._dataset(path, name) for name in (time_path, channel_path)]
         except InputError:
             self._file.close()
             raise
@@ -29,7 +30,7 @@ class Hdf5Pair:
         self.lengths = self._datasets[0].shape[0], self._datasets[1].shape[0]
 
     def _dataset(self, path: Path, name: str) -> h5py.Dataset:
-        node = get_node(self._file, name)
+        node = self._file.get(name)
         if not isinstance(node, h5py.Dataset):
             what = "no dataset" if node is None else "a group, no dataset,"
             raise InputError(f"{path}: has {what} {name}; found {self._nearby(name)}")
@@ -46,7 +47,7 @@ class Hdf5Pair:
         """What there is in the deepest group on the way to `name`."""
         group: h5py.Group = self._file
         for part in name.strip("/").split("/"):
-            below = get_node(group, part)
+            below = group.get(part)
             if not isinstance(below, h5py.Group):
                 break
             group = below

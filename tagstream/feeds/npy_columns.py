@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from io import BufferedReader
 from pathlib import Path
+from tokenize import TokenError
 from typing import Any
 
 import numpy as np
@@ -59,9 +60,10 @@ def _open(path: Path) -> _Array:
     file = path.open("rb")
     try:
         shape, _, dtype = _header(file)
-    except (ValueError, EOFError, SyntaxError) as error:
+    except (ValueError, EOFError, SyntaxError, TypeError, TokenError) as error:
         file.close()
-        raise InputError(f"{path}: is no .npy file: {error}") from None
+        text = " ".join(str(error).split())[:200]
+        raise InputError(f"{path}: is no .npy file: {text}") from None
     problem = None
     if len(shape) != 1:
         problem = f"has shape {shape}; right would be one dimension"

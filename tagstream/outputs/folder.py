@@ -55,9 +55,9 @@ class RunFolder:
                 f"{path}: written by {holder}; stop that process, or choose another name"
             ) from None
         started = datetime.now(UTC).isoformat(timespec="seconds")
-        self = {"pid": os.getpid(), "host": socket.gethostname(), "since": started}
+        own = {"pid": os.getpid(), "host": socket.gethostname(), "since": started}
         os.ftruncate(lock, 0)
-        os.write(lock, json.dumps(self).encode())
+        os.write(lock, json.dumps(own).encode())
         for leftover in path.glob("*.tmp"):
             leftover.unlink()
         return cls(path, lock)

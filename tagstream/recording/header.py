@@ -87,7 +87,7 @@ def write_end(entry: h5py.Group) -> None:
 def read_header(entry: h5py.Group) -> tuple[RecordingHeader, Fraction]:
     """(header, tick in ps) of a recording of this program.
 
-    Raises KeyError, ValueError, TypeError or what h5py raises for a damaged file.
+    Raises KeyError, ValueError or TypeError when something is missing or is no such thing.
     """
     ticks = _read_text(entry, "origin_ticks")
     truth = json.loads(_read_text(entry, "truth/data") or "{}")

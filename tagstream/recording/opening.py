@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
@@ -26,6 +27,16 @@ def open_hdf5(path: Path) -> h5py.File:
         return h5py.File(path, "r", rdcc_nbytes=0)
     except OSError as error:
         raise InputError(f"{path}: {_reason(str(error))}") from None
+
+
+@contextmanager
+def reporting_damage(path: Path) -> Iterator[None]:
+    """Turn what h5py raises wherever it meets broken structure, of many kinds, into InputError."""
+    try:
+        yield
+    except (OSError, RuntimeError, KeyError, TypeError, ValueError) as error:
+        text = " ".join(str(error).split())
+        raise InputError(f"{path}: is damaged, or no file of this kind: {text}") from error
 
 
 def require_content(path: Path) -> int:
@@ -76,17 +87,9 @@ def text_of(value: object) -> str:
 def children(group: h5py.Group) -> Iterator[tuple[str, h5py.Group | h5py.Dataset]]:
     """The members of a group that can be opened; a broken link is not one."""
     for name in group:
-        node = get_node(group, name)
+        node = group.get(name)
         if node is not None:
             yield name, node
-
-
-def get_node(group: h5py.Group, path: str) -> h5py.Group | h5py.Dataset | None:
-    """What is at `path`, or None if there is nothing that can be opened."""
-    try:
-        return group.get(path)
-    except (OSError, RuntimeError, ValueError):
-        return None
 
 
 def read_values(dataset: h5py.Dataset, first: int, last: int) -> NDArray[Any]:
@@ -126,7 +129,7 @@ def require_column(group: h5py.Group, name: str, kinds: str, where: str) -> h5py
 
     Raises InputError that names what is there instead.
     """
-    node = get_node(group, name)
+    node = group.get(name)
     if not isinstance(node, h5py.Dataset):
         names = ", ".join(found for found, _ in children(group)) or "nothing"
         raise InputError(f"{where}: has no dataset {name}; found {names}")

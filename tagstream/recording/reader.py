@@ -27,7 +27,7 @@ from tagstream.recording.layout import (
     RecordedPiece,
 )
 from tagstream.recording.marks import read_marks
-from tagstream.recording.opening import get_node, nx_class, open_hdf5, text_of
+from tagstream.recording.opening import nx_class, open_hdf5, reporting_damage, text_of
 
 
 class RecordingReader:
@@ -43,8 +43,9 @@ class RecordingReader:
         self.path = Path(path)
         self._file = open_hdf5(self.path)
         try:
-            self._open(group)
-        except BaseException:
+            with reporting_damage(self.path):
+                self._open(group)
+        except InputError:
             self._file.close()
             raise
 
@@ -64,7 +65,7 @@ class RecordingReader:
             raise InputError(f"{self.path}: layout {layout}; this version reads layout {LAYOUT}")
         try:
             return read_header(self._entry)
-        except (KeyError, ValueError, TypeError, OSError, RuntimeError) as error:
+        except (KeyError, ValueError, TypeError) as error:
             raise InputError(
                 f"{self.path}: {self._entry.name}: header is broken: {error}"
             ) from None
@@ -82,8 +83,9 @@ class RecordingReader:
 
         Raises InputError at the first broken place, after what was good before it.
         """
-        for row, end in self._rows():
-            yield from self._pieces_of(row, end)
+        with reporting_damage(self.path):
+            for row, end in self._rows():
+                yield from self._pieces_of(row, end)
 
     def _rows(self) -> Iterator[tuple[Row, int]]:
         if self._coverage is None:
@@ -104,7 +106,8 @@ class RecordingReader:
 
     def marks(self) -> list[Mark]:
         """The marks set during the run; none in a file of another program."""
-        return read_marks(self._entry[MARK_TABLE]) if MARK_TABLE in self._entry else []
+        with reporting_damage(self.path):
+            return read_marks(self._entry[MARK_TABLE]) if MARK_TABLE in self._entry else []
 
     def close(self) -> None:
         """Close the file."""
@@ -132,7 +135,7 @@ def _find_events(file: h5py.File, path: str | None) -> h5py.Group:
                 " `group` with the path of such a group"
             )
         return found
-    node = get_node(file, path)
+    node = file.get(path)
     if not isinstance(node, h5py.Group):
         names: list[str] = []
         file.visititems(lambda name, found: names.append(f"/{name}") if _is_events(found) else None)

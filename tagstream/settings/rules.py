@@ -158,6 +158,10 @@ def _g2_problems(
 def warnings(settings: Settings) -> list[str]:
     """Sentences about settings that work but may surprise."""
     found = []
+    for key in ("path", "scenario"):
+        path = getattr(settings.feed, key, None)
+        if path is not None and not path.exists():
+            found.append(f"[feed] {key}: {path} does not exist")
     if settings.feed.kind in LIVE_KINDS:
         found.append(
             f"[feed] kind: {settings.feed.kind} is understood for replays;"
