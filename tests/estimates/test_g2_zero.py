@@ -1,0 +1,173 @@
+"""g2 around zero lag: windows, background, few counts, published rows."""
+
+from __future__ import annotations
+
+from math import sqrt
+
+import numpy as np
+import pytest
+
+from tagstream.estimates.curves import g2_curves
+from tagstream.estimates.normalisation import expected_pairs
+from tests.estimates.made import S, estimator, sums, tally
+
+
+def counts(**at: int) -> np.ndarray:
+    """201 bins of 1 ns; `zero`, `plus_1`, `minus_1` and so on set single ones."""
+    made = np.zeros(201, np.int64)
+    for name, value in at.items():
+        sign, _, number = name.partition("_")
+        made[100 + {"zero": 0, "plus": 1, "minus": -1}[sign] * int(number or 0)] = value
+    return made
+
+
+def test_one_bin_by_default() -> None:
+    found = estimator(tally(), kind="g2-zero")(sums(counts(zero=50, plus_1=7), 100.0))
+    assert (found.value, found.counts) == (0.5, 50)
+    assert "window 1 ns" in found.method
+
+
+@pytest.mark.parametrize(
+    ("window", "inside"),
+    # An even number of bins is [-w/2, w/2), as a coincidence window is.
+    [("1 ns", 4), ("2 ns", 6), ("3 ns", 12), ("3.9 ns", 12), ("4 ns", 28)],
+)
+def test_windows(window: str, inside: int) -> None:
+    made = counts(zero=4, minus_1=2, plus_1=6, minus_2=16, plus_2=32)
+    found = estimator(tally(), kind="g2-zero", window=window)(sums(made, 1.0))
+    assert found.counts == inside
+    assert found.value == pytest.approx(inside / int(float(window.split()[0])))
+
+
+def test_two_detector_formula() -> None:
+    # g2 = N_TR T / (N_T N_R w) (Thorn et al., Am. J. Phys. 72, 1210 (2004)); one slice.
+    n_t, n_r, live, window_ps = 200_000, 150_000, 20 * S, 1_000
+    expected = n_t * n_r * window_ps / live
+    found = estimator(tally(), kind="g2-zero")(
+        sums(counts(zero=3), expected, singles=(n_t, n_r, 0), live_time_ps=live, pair_time_ps=live)
+    )
+    assert found.value == pytest.approx(3 * live / (n_t * n_r * window_ps))
+
+
+def test_grangier_1986() -> None:
+    # Grangier, Roger, Aspect, Europhys. Lett. 1, 173 (1986), Table 1 (from memory; the remembered
+    # inputs give back the published alpha): triggers 8870/s, singles behind the splitter 4.55 and
+    # 5.75/s, 17200 s, 9 coincidences; expected N_2r N_2t / N_1 T = 50.8, alpha = 0.18 +- 0.06.
+    expected = 4.55 * 5.75 / 8870 * 17_200
+    assert expected == pytest.approx(50.8, rel=0.02)
+    found = estimator(tally(), kind="g2-zero", interval="exact")(sums(counts(zero=9), expected))
+    assert found.value == pytest.approx(0.18, abs=0.005)
+    assert (found.upper - found.lower) / 2 == pytest.approx(0.06, abs=0.01)
+    # Garwood 68.27 % on 9 counts: [6.056, 13.110].
+    assert found.lower * expected == pytest.approx(6.056, abs=1e-3)
+    assert found.upper * expected == pytest.approx(13.110, abs=1e-3)
+
+
+def test_background() -> None:
+    # Brouri et al., Opt. Lett. 25, 1294 (2000) (from memory): a perfect emitter with
+    # rho = S / (S + B) = 0.9 shows 1 - rho^2 = 0.19.
+    chosen = estimator(tally(), kind="g2-zero", signal_fraction=0.9)
+    found = chosen(sums(counts(zero=1_900), 10_000.0))
+    assert found.value == pytest.approx(0, abs=1e-12)
+    assert found.raw_value == pytest.approx(0.19)
+    assert found.upper - found.value == pytest.approx((found.raw_upper - 0.19) / 0.81)
+    assert "signal fraction 0.9" in found.method
+
+
+def test_a_value_below_zero_is_shown_and_flagged() -> None:
+    chosen = estimator(tally(), kind="g2-zero", signal_fraction=0.9)
+    found = chosen(sums(counts(zero=1_500), 10_000.0))
+    assert found.value == pytest.approx((0.15 - 0.19) / 0.81)
+    assert "below zero" in found.note
+
+
+def test_no_counts_are_an_upper_limit() -> None:
+    found = estimator(tally(), kind="g2-zero", level=0.95)(sums(counts(), 100.0))
+    assert found.interval == "upper-limit"
+    assert found.upper == pytest.approx(2.9957 / 100, rel=1e-4)
+
+
+def test_no_pairs_to_compare_with() -> None:
+    found = estimator(tally(), kind="g2-zero")(sums(counts(), 0.0))
+    assert found.interval == "none"
+    assert "no live time" in found.reason
+
+
+@pytest.mark.parametrize("means", [(300, 500), (2, 10), (0.1, 2)])
+@pytest.mark.parametrize("level", [0.6827, 0.95])
+def test_coverage_on_drawn_counts(means: tuple[float, float], level: float) -> None:
+    # Averaged over the mean: at a single mean of few counts the steps of the interval decide.
+    rng = np.random.default_rng(3)
+    mean = rng.uniform(*means, 10_000)
+    counted = rng.poisson(mean)
+    chosen = estimator(tally(), kind="g2-zero", level=level)
+    found = {n: chosen(sums(counts(zero=n), 1.0)) for n in np.unique(counted).tolist()}
+    held = np.mean(
+        [found[n].lower <= m <= found[n].upper for m, n in zip(mean, counted.tolist(), strict=True)]
+    )
+    slack = 3 * sqrt(level * (1 - level) / 10_000)
+    assert held >= level - slack
+    if means[0] > 10:
+        assert held <= level + slack
+
+
+def test_slices_allow_for_drift_and_totals_do_not() -> None:
+    # Independent light whose rate scans tenfold: slice by slice it is 1, from totals 1.41; a sine
+    # of 20 % gives 1.02 (for the sine 1 + 0.2^2 / 2; for a linear scan <n^2>/<n>^2).
+    for rates, biased in (
+        (np.linspace(1, 10, 1_001), 1.22),
+        (10 ** np.linspace(0, 1, 1_001), 1.41),
+        (1 + 0.2 * np.sin(np.linspace(0, 20 * np.pi, 1_000, endpoint=False)), 1.02),
+    ):
+        n = rates * 1e5
+        slices = n * n * 1_000 / S  # expected pairs of each slice of 1 s, bins of 1 ns
+        total = int(n.sum())
+        made = sums(
+            np.full(201, round(slices.sum())),
+            slices.sum(),
+            singles=(total, total, 0),
+            live_time_ps=n.size * S,
+            pair_time_ps=n.size * S,
+        )
+        fair = estimator(tally(), kind="g2-zero")(made)
+        assert fair.value == pytest.approx(1, abs=1e-3)
+        unfair = estimator(tally(normalisation="global"), kind="g2-zero")(made)
+        assert unfair.value == pytest.approx(biased, abs=0.015)
+        assert "normalised by global" in unfair.method
+
+
+def test_pair_time_takes_out_the_loss_at_edges() -> None:
+    # |lag| = 1/4 of the live time: uncorrected 0.75, corrected 1, with T in the numerator 0.56.
+    live, rate = 4_000_000, 1e-3
+    pair_time = live - np.abs(np.arange(-100, 101)) * 10_000
+    n = int(live * rate)
+    made = sums(
+        np.rint(n * n * 1_000 * pair_time / live**2 * 1e3),
+        singles=(n, n, 0),
+        live_time_ps=live,
+        pair_time_ps=pair_time,
+    )["hbt"]
+    fair = expected_pairs(made, tally(normalisation="global"))
+    assert made["counts"] / fair / 1e3 == pytest.approx(np.ones(201), abs=1e-3)
+    uncorrected = made["counts"] / (n * n * 1_000 / live) / 1e3
+    assert uncorrected[0] == pytest.approx(0.75, abs=1e-3)
+
+
+def test_one_channel_from_totals_leaves_each_tag_out_once() -> None:
+    one = tally(stop="a", normalisation="global")
+    made = sums(counts(), singles=(10, 10, 0))["hbt"]
+    assert float(expected_pairs(made, one)) == pytest.approx(10 * 9 * 1_000 / S)
+
+
+def test_curves() -> None:
+    made = sums(counts(zero=9, plus_1=100), 50.0)["hbt"]
+    found = g2_curves(made, tally())
+    assert found["g2"][100] == pytest.approx(0.18)
+    # Garwood 68.27 % on 9 counts.
+    assert found["g2_lower"][100] * 50 == pytest.approx(6.056, abs=1e-3)
+    assert found["g2_upper"][100] * 50 == pytest.approx(13.110, abs=1e-3)
+    assert found["g2_errors"][100] == pytest.approx((13.110 - 6.056) / 100, abs=1e-4)
+    assert found["g2_errors"][0] > 0  # no counts still have an uncertainty
+    assert found["expected_pairs"].shape == (201,)
+    empty = g2_curves(sums(counts(), 0.0)["hbt"], tally())
+    assert np.isnan(empty["g2"]).all()
