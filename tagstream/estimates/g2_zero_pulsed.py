@@ -47,6 +47,7 @@ class G2ZeroPulsed(Estimator):
         self._clock = None if settings.clock is None else channels[settings.clock]
         self._width = settings.window_ps // self._tally.bin_ps
         self._found: tuple[Comb, list[int]] | None = None
+        self._fixed_method = self._describe(settings.period_ps)
 
     def __call__(self, sums: Mapping[str, Sums]) -> Estimate:
         period_ps, clock_note = self._period(sums)
@@ -135,6 +136,9 @@ class G2ZeroPulsed(Estimator):
         return self._found[1]
 
     def _method(self, period_ps: Fraction | None) -> str:
+        return self._fixed_method if self._clock is None else self._describe(period_ps)
+
+    def _describe(self, period_ps: Fraction | None) -> str:
         settings = self._settings
         first, last = settings.peak_range
         window = format_time(self._width * self._tally.bin_ps)
