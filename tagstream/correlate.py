@@ -2,11 +2,16 @@
 
 from __future__ import annotations
 
+import os
+from concurrent.futures import ThreadPoolExecutor
+
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from tagstream.tallies.cross_correlation import lag_axis
+from tagstream.tallies.bins import exact_division, lag_axis
 from tagstream.tallies.kernels import fill_pairs
+
+STARTS_A_THREAD = 100_000  # fewer are counted sooner than a thread is started
 
 
 def cross_correlation(
@@ -29,12 +34,33 @@ def cross_correlation(
         )
     starts = _times("start_ps", start_ps)
     stops = starts if stop_ps is start_ps else _times("stop_ps", stop_ps)
-    lags = lag_axis(int(max_lag_ps) // int(bin_ps), int(bin_ps))
-    counts = np.zeros(lags.size, np.int64)
-    fill_pairs(starts, stops, int(bin_ps), counts)
+    bins_each_side, width = int(max_lag_ps) // int(bin_ps), int(bin_ps)
+    counts = _counted(starts, stops, bins_each_side, width)
     if stops is starts:
-        counts[lags.size // 2] -= starts.size  # each tag met itself
-    return lags, counts
+        counts[bins_each_side] -= starts.size  # each tag met itself
+    return lag_axis(bins_each_side, width), counts
+
+
+def _counted(
+    starts: NDArray[np.int64], stops: NDArray[np.int64], bins_each_side: int, bin_ps: int
+) -> NDArray[np.int64]:
+    """All pairs, the starts shared out among threads: each has counts of its own, added after."""
+    division = exact_division(bins_each_side, bin_ps)
+    workers = max(1, min(os.cpu_count() or 1, starts.size // STARTS_A_THREAD))
+    bounds = [starts.size * i // workers for i in range(workers + 1)]
+    partial = np.zeros((workers, 2 * bins_each_side + 1), np.int64)
+
+    def fill(i: int) -> None:
+        mine = starts[bounds[i] : bounds[i + 1]]
+        if mine.size:
+            reach = bins_each_side * bin_ps + bin_ps
+            low = np.searchsorted(stops, mine[0] - reach, side="left")
+            high = np.searchsorted(stops, mine[-1] + reach, side="right")
+            fill_pairs(mine, stops[low:high], division, partial[i])
+
+    with ThreadPoolExecutor(workers) as pool:
+        list(pool.map(fill, range(workers)))
+    return np.asarray(partial.sum(axis=0))
 
 
 def _times(name: str, values: ArrayLike) -> NDArray[np.int64]:

@@ -23,13 +23,11 @@ from tagstream.feeds import Feed
 from tagstream.outputs import Row, RunHeader, Sink, Snapshot, SpanView
 from tagstream.settings import Settings, rules
 from tagstream.settings.measures import CountRate, EstimateSettings, G2ZeroPulsed, TallySettings
-from tagstream.tallies import Sums, build_tally
+from tagstream.tallies import SINGLES, Sums, Tally, build_tallies
 from tagstream.tallies.singles import Singles
 from tagstream.tallies.slicer import cut_at_slices
 from tagstream.tallies.spans import Spans, SpanSums
 from tagstream.units import PS_PER_S, format_time
-
-SINGLES = "channels"  # the name of the tally of singles among the sums
 
 
 class State(StrEnum):
@@ -72,10 +70,11 @@ class Pipeline:
             if isinstance(e, G2ZeroPulsed) and e.clock is not None
         }
         self._conditioner = Conditioner(settings, self.counters)
-        self._tallies = {
-            SINGLES: Singles(len(index), sorted(clocks)),
-            **{name: build_tally(tally, index) for name, tally in tally_settings.items()},
-        }
+        self._tallies: list[Tally] = [
+            Singles(len(index), sorted(clocks)),
+            *build_tallies(settings.tallies, index),
+        ]
+        self._axes = {name: axes for t in self._tallies for name, axes in t.axes.items()}
         self._estimators = {
             estimate.name: build_estimator(_resolved(estimate, settings), index, tally_settings)
             for estimate in settings.estimates
@@ -118,14 +117,14 @@ class Pipeline:
                 if self._slice is not None and index != self._slice:
                     self._end_slice(self._slice)
                 self._slice = index
-                for tally in self._tallies.values():
+                for tally in self._tallies:
                     tally.add(piece)
                 if piece.end_ps == (index + 1) * slice_ps:
                     self._end_slice(index)
 
     def _end_slice(self, index: int) -> None:
         self._slice = None
-        sums = {name: tally.take() for name, tally in self._tallies.items()}
+        sums = {name: found for tally in self._tallies for name, found in tally.take().items()}
         self._spans.add(index, sums)
         singles, slice_ps = sums[SINGLES], self.settings.rolling.slice_ps
         self.sink.add_row(
@@ -176,7 +175,7 @@ class Pipeline:
         )
 
     def _arrays(self, sums: Sums, tally: TallySettings) -> Mapping[str, NDArray[Any]]:
-        return {**self._tallies[tally.name].axes, **sums, **g2_curves(sums, tally)}
+        return {**self._axes[tally.name], **sums, **g2_curves(sums, tally)}
 
     def _health(self, state: State) -> dict[str, int | float | str]:
         counters = self.counters

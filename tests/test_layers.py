@@ -22,7 +22,12 @@ SHARED = {
     "units",
 }
 # Kernels that tests reach through the class that owns their state, and their twin there.
-THROUGH_THEIR_CLASS = {"fill_judged": "naive.judged", "fill_survivors": "naive.without_dead_time"}
+THROUGH_THEIR_CLASS = {
+    "fill_plain": "naive.judged",
+    "fill_judged": "naive.judged",
+    "fill_survivors": "naive.without_dead_time",
+    "fill_close_pairs": "add_sparse",
+}
 MODULES = sorted(PACKAGE.rglob("*.py"))
 
 

@@ -8,7 +8,7 @@ estimates.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from importlib import import_module
 from typing import Any, Protocol
 
@@ -23,32 +23,40 @@ from tagstream.block import Block
 Sums = Mapping[str, NDArray[Any]]
 
 
+SINGLES = "channels"  # the name of the sums of the tally that every run has
+
+
 class Tally(Protocol):
-    """An integer accumulator.
+    """An integer accumulator; one may serve several [[tally]] sections in a single pass.
 
     `add` takes pieces of one slice in stream order. `take` returns the sums of the slice that
-    ended, int64, owned by the caller, and starts the next slice at zero; look-back survives.
-    `axes` are the arrays that do not add up (bin centres and edges), fixed for the run.
+    ended, by name of section, owned by the caller, and starts the next slice at zero; look-back
+    survives. `axes`, by name, are the arrays that do not add up (bin centres and edges).
     """
+
+    @property
+    def axes(self) -> Mapping[str, Mapping[str, NDArray[Any]]]: ...
 
     def add(self, piece: Block) -> None: ...
 
-    def take(self) -> dict[str, NDArray[Any]]: ...
-
-    @property
-    def axes(self) -> Mapping[str, NDArray[Any]]: ...
+    def take(self) -> dict[str, dict[str, NDArray[Any]]]: ...
 
 
+# kind -> "module:function" that builds the tallies of all sections of that kind
 _KINDS = {
-    "cross-correlation": "tagstream.tallies.cross_correlation:CrossCorrelation",
+    "cross-correlation": "tagstream.tallies.cross_correlation:build",
 }
 
 
-def build_tally(settings: Any, channels: Mapping[str, int]) -> Tally:
-    """The tally for a [[tally]] section. `channels`: name -> index in the blocks."""
-    module, name = _KINDS[settings.kind].split(":")
-    builder: Callable[[Any, Mapping[str, int]], Tally] = getattr(import_module(module), name)
-    return builder(settings, channels)
+def build_tallies(sections: Sequence[Any], channels: Mapping[str, int]) -> list[Tally]:
+    """The tallies for the [[tally]] sections. `channels`: name -> index in the blocks."""
+    tallies: list[Tally] = []
+    for kind, place in _KINDS.items():
+        of_kind = [section for section in sections if section.kind == kind]
+        module, name = place.split(":")
+        builder: Callable[..., list[Tally]] = getattr(import_module(module), name)
+        tallies += builder(of_kind, channels)
+    return tallies
 
 
 def added(sums: Sums | None, more: Sums) -> dict[str, NDArray[Any]]:

@@ -1,22 +1,29 @@
-"""Histogram of the lags between two channels, or of one channel with itself."""
+"""Histograms of the lags between two channels, or of one channel with itself."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.block import Block
-from tagstream.settings.measures import CrossCorrelation as CrossCorrelationSettings
-from tagstream.tallies.kernels import fill_pairs, fill_selected
+from tagstream.settings.measures import CrossCorrelation
+from tagstream.tallies.bins import lag_axis, lag_edges
+from tagstream.tallies.kernels import fill_counts
 from tagstream.tallies.pair_time import PairTime
+from tagstream.tallies.pairs import PairHistograms
 
 
-def lag_axis(bins_each_side: int, bin_ps: int) -> NDArray[np.int64]:
-    """Centres of the 2 K + 1 bins in ps, int64."""
-    return np.arange(-bins_each_side, bins_each_side + 1, dtype=np.int64) * bin_ps
+def build(
+    sections: Sequence[CrossCorrelation], channels: Mapping[str, int]
+) -> list[CrossCorrelations]:
+    """Tallies for all [[tally]] sections of this kind; those with equal bins share one pass."""
+    alike: dict[tuple[int, int], list[CrossCorrelation]] = {}
+    for section in sections:
+        alike.setdefault((section.bin_ps, section.bins_each_side), []).append(section)
+    return [CrossCorrelations(group, channels) for group in alike.values()]
 
 
 def expected_pairs(
@@ -33,93 +40,63 @@ def expected_pairs(
     return np.asarray(per_ps * pair_time_ps.astype(np.float64))
 
 
-class CrossCorrelation:
+class CrossCorrelations:
     """Pairs (start, stop) by lag = t_stop - t_start, in the slice of their later tag.
 
-    Bin k = -K..K holds the lags with floor((2 lag + bin) / (2 bin)) = k. Where start and stop
-    are one channel, ordered pairs of distinct tags count. Nothing is correlated across a gap.
+    sections: with equal bins. Bin k = -K..K holds the lags with
+    floor((2 lag + bin) / (2 bin)) = k. Where start and stop are one channel, ordered pairs of
+    distinct tags count. Nothing is correlated across a gap.
 
-    Sums: counts (2K + 1), start_counts, stop_counts, live_time_ps (), pair_time_ps (() or
-    2K + 1), int64; expected_pairs (() or 2K + 1), float64.
+    Sums of each: counts (2K + 1), start_counts, stop_counts, live_time_ps (), pair_time_ps (()
+    or 2K + 1), int64; expected_pairs (() or 2K + 1), float64.
     """
 
-    def __init__(self, settings: CrossCorrelationSettings, channels: Mapping[str, int]) -> None:
-        self._start, self._stop = channels[settings.start], channels[settings.stop]
-        self._bin_ps = settings.bin_ps
-        self._zero_bin = settings.bins_each_side
-        self._lags = lag_axis(settings.bins_each_side, settings.bin_ps)
-        self._counts = np.zeros(self._lags.size, np.int64)
-        self._pair_time = PairTime(self._lags)
-        self._start_counts = self._stop_counts = self._live_time_ps = 0
-        self._starts: NDArray[np.int64] = np.empty(0, np.int64)
-        self._stops: NDArray[np.int64] = np.empty(0, np.int64)
-
-    @property
-    def axes(self) -> Mapping[str, NDArray[Any]]:
-        edges = np.append(2 * self._lags - self._bin_ps, 2 * self._lags[-1] + self._bin_ps)
-        return {"lag": self._lags.astype(np.float64), "lag_edges": edges / 2.0}
+    def __init__(self, sections: Sequence[CrossCorrelation], channels: Mapping[str, int]) -> None:
+        self._pairs = {s.name: (channels[s.start], channels[s.stop]) for s in sections}
+        self._bin_ps, bins = sections[0].bin_ps, sections[0].bins_each_side
+        self._histograms = PairHistograms(
+            list(self._pairs.values()), len(channels), bins, self._bin_ps
+        )
+        axes = {
+            "lag": lag_axis(bins, self._bin_ps).astype(np.float64),
+            "lag_edges": lag_edges(bins, self._bin_ps),
+        }
+        self.axes = dict.fromkeys(self._pairs, axes)
+        self._pair_time = PairTime(lag_axis(bins, self._bin_ps))
+        self._singles = np.zeros(len(channels), np.int64)
+        self._live_time_ps = 0
 
     def add(self, piece: Block) -> None:
-        if piece.opens:
-            self._forget()
         self._pair_time.add(piece)
         self._live_time_ps += piece.end_ps - piece.begin_ps
-        starts = self._select(piece, self._start)
-        self._start_counts += _counted(starts, piece.begin_ps)
-        if self._start == self._stop:
-            self._stop_counts = self._start_counts
-            self._count(starts, starts)
-            self._counts[self._zero_bin] -= starts.size  # each tag met itself
-        else:
-            stops = self._select(piece, self._stop)
-            self._stop_counts += _counted(stops, piece.begin_ps)
-            self._count(starts, stops)
-        self._keep_since(piece.end_ps - (self._counts.size * self._bin_ps + 1) // 2)
+        first = int(np.searchsorted(piece.times_ps, np.int64(piece.begin_ps)))
+        fill_counts(piece.channels[first:], self._singles)
+        self._histograms.add(piece)
 
-    def take(self) -> dict[str, NDArray[Any]]:
+    def take(self) -> dict[str, dict[str, NDArray[Any]]]:
         pair_time = self._pair_time.take()
-        others = self._stop_counts - (self._start == self._stop)
+        histograms = self._histograms.counts
         sums = {
-            "counts": self._counts.copy(),
-            "start_counts": np.array(self._start_counts, np.int64),
-            "stop_counts": np.array(self._stop_counts, np.int64),
+            name: self._sums(counts.copy(), pair, pair_time)
+            for (name, pair), counts in zip(self._pairs.items(), histograms, strict=True)
+        }
+        histograms[:] = 0
+        self._singles[:] = 0
+        self._live_time_ps = 0
+        return sums
+
+    def _sums(
+        self, counts: NDArray[np.int64], pair: tuple[int, int], pair_time: NDArray[np.int64]
+    ) -> dict[str, NDArray[Any]]:
+        starts, stops = (int(self._singles[channel]) for channel in pair)
+        others = max(stops - (pair[0] == pair[1]), 0)
+        return {
+            "counts": counts,
+            "start_counts": np.array(starts, np.int64),
+            "stop_counts": np.array(stops, np.int64),
             "live_time_ps": np.array(self._live_time_ps, np.int64),
             "pair_time_ps": pair_time,
             "expected_pairs": expected_pairs(
-                self._start_counts, max(others, 0), self._live_time_ps, pair_time, self._bin_ps
+                starts, others, self._live_time_ps, pair_time, self._bin_ps
             ),
         }
-        self._counts[:] = 0
-        self._start_counts = self._stop_counts = self._live_time_ps = 0
-        return sums
-
-    def _select(self, piece: Block, channel: int) -> NDArray[np.int64]:
-        out = np.empty(piece.times_ps.size + 1, np.int64)
-        return out[: fill_selected(piece.times_ps, piece.channels, channel, out)]
-
-    def _count(self, starts: NDArray[np.int64], stops: NDArray[np.int64]) -> None:
-        """Pairs whose later tag is new: (all starts, new stops) and (new starts, old stops)."""
-        old_stops = self._stops
-        self._starts = np.concatenate((self._starts, starts))
-        self._stops = np.concatenate((self._stops, stops))
-        fill_pairs(self._starts, stops, self._bin_ps, self._counts)
-        fill_pairs(starts, old_stops, self._bin_ps, self._counts)
-
-    def _keep_since(self, oldest_ps: int) -> None:
-        """Keep the tags that a later one can still reach."""
-        first_start, first_stop = (
-            np.searchsorted(self._starts, oldest_ps),
-            np.searchsorted(self._stops, oldest_ps),
-        )
-        self._starts, self._stops = (
-            self._starts[first_start:].copy(),
-            self._stops[first_stop:].copy(),
-        )
-
-    def _forget(self) -> None:
-        self._starts = self._stops = np.empty(0, np.int64)
-
-
-def _counted(times_ps: NDArray[np.int64], begin_ps: int) -> int:
-    """Tags in the live interval: all but those that open an assumed stretch."""
-    return int(times_ps.size - np.searchsorted(times_ps, np.int64(begin_ps)))

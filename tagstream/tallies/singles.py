@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from typing import Any
+from collections.abc import Sequence
+from typing import Any, ClassVar
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.block import Block
+from tagstream.tallies import SINGLES
 from tagstream.tallies.kernels import fill_counts, fill_periods, fill_selected
-
-NONE = -1
 
 
 class Singles:
@@ -22,12 +21,12 @@ class Singles:
     slice of its later tag.
     """
 
-    axes: Mapping[str, NDArray[Any]] = {}
+    axes: ClassVar[dict[str, dict[str, NDArray[Any]]]] = {SINGLES: {}}
 
     def __init__(self, channels: int, clocks: Sequence[int]) -> None:
         self._counts = np.zeros(channels, np.int64)
         self._live_time_ps = 0
-        self._last = {clock: np.full(2, NONE, np.int64) for clock in clocks}
+        self._last = {clock: np.zeros(4, np.int64) for clock in clocks}
         self._periods = np.zeros((channels, 3), np.int64)
 
     def add(self, piece: Block) -> None:
@@ -36,12 +35,12 @@ class Singles:
         self._live_time_ps += piece.end_ps - piece.begin_ps
         for clock, last in self._last.items():
             if piece.opens:
-                last[:] = NONE
+                last[:] = 0
             times = np.empty(piece.times_ps.size + 1, np.int64)
             count = fill_selected(piece.times_ps, piece.channels, clock, times)
             fill_periods(times[:count], last, self._periods[clock])
 
-    def take(self) -> dict[str, NDArray[Any]]:
+    def take(self) -> dict[str, dict[str, NDArray[Any]]]:
         sums = {
             "counts": self._counts.copy(),
             "live_time_ps": np.array(self._live_time_ps, np.int64),
@@ -52,4 +51,4 @@ class Singles:
         self._counts[:] = 0
         self._periods[:] = 0
         self._live_time_ps = 0
-        return sums
+        return {SINGLES: sums}

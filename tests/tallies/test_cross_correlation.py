@@ -3,28 +3,61 @@
 from __future__ import annotations
 
 import itertools
+from typing import Any
 
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from numpy.typing import NDArray
 
 from tagstream.settings.measures import CrossCorrelation as Settings
-from tagstream.tallies.cross_correlation import CrossCorrelation, expected_pairs
+from tagstream.tallies.cross_correlation import CrossCorrelations, build, expected_pairs
 from tests import naive
 from tests.fakes_blocks import block
 from tests.strategies import cuts, tags
 
-CHANNELS = {"a": 0, "b": 1}
+CHANNELS = {"a": 0, "b": 1, "c": 2}
 
 
-def tally(stop: str = "b", bin_ps: int = 10, max_lag_ps: int = 200) -> CrossCorrelation:
-    table = {"name": "t", "kind": "cross-correlation", "start": "a", "stop": stop}
-    table |= {"max_lag": f"{max_lag_ps} ps", "bin": f"{bin_ps} ps"}
-    return CrossCorrelation(Settings.model_validate(table), CHANNELS)
+def section(name: str, start: str, stop: str, bin_ps: int, max_lag_ps: int) -> Settings:
+    table = {"name": name, "kind": "cross-correlation", "start": start, "stop": stop}
+    return Settings.model_validate(
+        table | {"max_lag": f"{max_lag_ps} ps", "bin": f"{bin_ps} ps"}
+    )
 
 
-def fed(counter: CrossCorrelation, events: list[tuple[int, int]], bounds: list[int]) -> None:
+class One:
+    """The tally of a single section."""
+
+    def __init__(self, stop: str = "b", bin_ps: int = 10, max_lag_ps: int = 200) -> None:
+        self.all = CrossCorrelations([section("t", "a", stop, bin_ps, max_lag_ps)], CHANNELS)
+        self.add = self.all.add
+        self.axes = self.all.axes["t"]
+
+    def take(self) -> dict[str, NDArray[Any]]:
+        return self.all.take()["t"]
+
+
+tally = One
+
+
+def test_sections_with_equal_bins_share_a_pass() -> None:
+    sections = [section("x", "a", "b", 10, 200), section("y", "b", "a", 10, 200)]
+    sections += [section("z", "a", "b", 10, 100), section("w", "a", "a", 10, 200)]
+    shared, alone = build(sections, CHANNELS)
+    assert set(shared.axes) == {"x", "y", "w"}
+    assert set(alone.axes) == {"z"}
+    for one in (shared, alone):
+        one.add(block([(10, 0), (50, 1), (55, 0)], 0, 100, opens=True))
+    sums = shared.take() | alone.take()
+    assert list(np.flatnonzero(sums["x"]["counts"]) - 20) == [0, 4]
+    assert list(np.flatnonzero(sums["y"]["counts"]) - 20) == [-4, 1]
+    assert list(np.flatnonzero(sums["z"]["counts"]) - 10) == [0, 4]
+    assert list(np.flatnonzero(sums["w"]["counts"]) - 20) == [-4, 5]
+
+
+def fed(counter: One, events: list[tuple[int, int]], bounds: list[int]) -> None:
     for i, (begin, end) in enumerate(itertools.pairwise(bounds)):
         counter.add(block([e for e in events if begin <= e[0] < end], begin, end, opens=i == 0))
 

@@ -6,14 +6,22 @@ import numpy as np
 from hypothesis import given
 from hypothesis import strategies as st
 
-from tagstream.tallies.kernels import fill_counts, fill_pairs, fill_periods, fill_selected
+from tagstream.tallies.bins import exact_division
+from tagstream.tallies.kernels import (
+    bin_of,
+    fill_counts,
+    fill_pairs,
+    fill_periods,
+    fill_selected,
+    fill_wanted,
+)
 from tests import naive
 from tests.strategies import int64, sorted_times
 
 
 def pairs(starts: list[int], stops: list[int], bin_ps: int, bins: int) -> list[int]:
     counts = np.zeros(2 * bins + 1, np.int64)
-    fill_pairs(int64(starts), int64(stops), bin_ps, counts)
+    fill_pairs(int64(starts), int64(stops), exact_division(bins, bin_ps), counts)
     return list(counts)
 
 
@@ -62,6 +70,10 @@ def test_selection_and_counts(tags: list[tuple[int, int]]) -> None:
     out = np.empty(len(tags) + 1, np.int64)
     n = fill_selected(int64(times), np.array(channels, np.uint8), 2, out)
     assert list(out[:n]) == naive.selected(times, channels, 2)
+    wanted = np.array([1, 0, 1, 0], np.uint8)
+    out_channels = np.empty(len(tags) + 1, np.uint8)
+    n = fill_wanted(int64(times), np.array(channels, np.uint8), wanted, out, out_channels)
+    assert list(zip(out[:n], out_channels[:n], strict=True)) == [t for t in tags if t[1] in (0, 2)]
     counts = np.zeros(4, np.int64)
     fill_counts(np.array(channels, np.uint8), counts)
     assert list(counts) == naive.channel_counts(channels, 4)
@@ -69,7 +81,22 @@ def test_selection_and_counts(tags: list[tuple[int, int]]) -> None:
 
 @given(sorted_times(), st.integers(0, 40))
 def test_periods_in_two_pieces(times: list[int], cut: int) -> None:
-    last, sums = np.full(2, -1, np.int64), np.zeros(3, np.int64)
+    last, sums = np.zeros(4, np.int64), np.zeros(3, np.int64)
     fill_periods(int64(times[:cut]), last, sums)
     fill_periods(int64(times[cut:]), last, sums)
     assert tuple(sums.tolist()) == naive.periods(times)
+
+
+@given(st.integers(1, 2**40), st.integers(1, 1_000), st.data())
+def test_the_bin_of_a_doubled_lag_is_exact(bin_ps: int, bins: int, data: st.DataObject) -> None:
+    division = exact_division(bins, bin_ps)
+    furthest = 2 * (2 * bins + 1) * bin_ps
+    multiple = st.integers(0, 2 * bins + 1).map(lambda k: 2 * bin_ps * k)
+    near = st.builds(lambda x, d: min(max(x + d, 0), furthest), multiple, st.integers(-1, 1))
+    for twice in data.draw(st.lists(near | st.integers(0, furthest), min_size=20)):
+        assert bin_of(twice, division) == twice // (2 * bin_ps)
+
+
+def test_both_ways_of_division_are_used() -> None:
+    assert exact_division(500, 100)[1] > 0
+    assert exact_division(5_000, 1_000_000)[1] == 0

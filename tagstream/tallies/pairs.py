@@ -1,0 +1,150 @@
+"""Histograms of pairs of channels that share their bins, counted in one pass."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tagstream.block import Block
+from tagstream.tallies.bins import exact_division
+from tagstream.tallies.kernels import (
+    CHUNK,
+    fill_close_pairs,
+    fill_pairs,
+    fill_selected,
+    fill_wanted,
+)
+
+# Neighbours in reach of a tag up to which going through all channels together is faster than
+# two pointers on separate ones: measured, they cross between 0.5 and 1.
+SPARSE_NEIGHBOURS = 0.6
+
+
+class PairHistograms:
+    """Pairs (start, stop) by lag, over pieces of a stream; nothing is paired across a gap.
+
+    pairs: channel indices of start and stop, one pair a histogram; start = stop means ordered
+    pairs of distinct tags. number: of channels in the blocks. A pair counts when its later tag
+    comes. `counts` is int64, (len(pairs), 2K + 1); the caller may zero it.
+
+    There are two ways, which give the same integers. Where few tags have another one in reach,
+    all channels are gone through together in layers (kernels.fill_close_pairs): that costs
+    little more than reading the times, for any number of pairs. Where many have, channels are
+    separated and two pointers go over each pair (kernels.fill_pairs): that never meets a pair
+    that nobody wants.
+    """
+
+    def __init__(
+        self, pairs: Sequence[tuple[int, int]], number: int, bins_each_side: int, bin_ps: int
+    ) -> None:
+        self._pairs, self._number = list(pairs), number
+        self._zero_bin = bins_each_side
+        self._reach = (2 * bins_each_side + 1) * bin_ps
+        self._division = exact_division(bins_each_side, bin_ps)
+        # One histogram more for pairs that nobody wants, one bin more for the outermost edge.
+        self._all_counts = np.zeros((len(self._pairs) + 1, 2 * bins_each_side + 2), np.int64)
+        self.counts = self._all_counts[:-1, :-1]
+        self._targets = _targets(self._pairs, number, self._all_counts.shape[1])
+        self._candidates = np.empty(CHUNK + 1, np.int64)
+        self._wanted = np.zeros(number, np.uint8)
+        self._wanted[[channel for pair in self._pairs for channel in pair]] = 1
+        self._forget()
+
+    def add(self, piece: Block) -> None:
+        """Count the pairs whose later tag is in `piece`."""
+        if piece.opens:
+            self._forget()
+        times, channels = self._wanted_tags(piece)
+        if times.size:
+            in_reach = times.size * (self._reach // 2)
+            if in_reach <= SPARSE_NEIGHBOURS * (piece.end_ps - piece.begin_ps):
+                self.add_sparse(times, channels)
+            else:
+                self.add_dense(times, channels)
+        self._keep_since(piece.end_ps - self._reach // 2, times, channels)
+
+    def add_sparse(self, times: NDArray[np.int64], channels: NDArray[np.uint8]) -> None:
+        """Count the pairs of the wanted tags of a piece, and with those before it, in layers."""
+        half = self._reach // 2
+        head = int(np.searchsorted(times, times[0] + half, side="right"))
+        old = self._old_times
+        oldest = old[0] if old.size else times[0]
+        beyond = np.array([oldest - half - 1], np.int64)  # out of reach of all that follow
+        self._fill_close(
+            np.concatenate((beyond, old, times[:head])),
+            np.concatenate((np.zeros(1, np.uint8), self._old_channels, channels[:head])),
+            1 + int(old.size),
+        )
+        self._fill_close(times, channels, head)
+
+    def add_dense(self, times: NDArray[np.int64], channels: NDArray[np.uint8]) -> None:
+        """The same by two pointers: (all starts, new stops) and (new starts, old stops)."""
+        old, new = {}, {}
+        for channel in np.flatnonzero(self._wanted).tolist():
+            old[channel] = self._select(self._old_times, self._old_channels, channel)
+            new[channel] = self._select(times, channels, channel)
+        for (start, stop), counts in zip(self._pairs, self.counts, strict=True):
+            all_starts = np.concatenate((old[start], new[start]))
+            fill_pairs(all_starts, new[stop], self._division, counts)
+            fill_pairs(new[start], old[stop], self._division, counts)
+            if start == stop:
+                counts[self._zero_bin] -= new[start].size  # each tag met itself
+
+    def _fill_close(
+        self, times: NDArray[np.int64], channels: NDArray[np.uint8], first: int
+    ) -> None:
+        fill_close_pairs(
+            times,
+            channels,
+            first,
+            self._division,
+            self._reach,
+            self._number,
+            self._targets,
+            self._candidates,
+            self._all_counts.ravel(),
+        )
+
+    def _wanted_tags(self, piece: Block) -> tuple[NDArray[np.int64], NDArray[np.uint8]]:
+        if self._wanted.all():
+            return piece.times_ps, piece.channels
+        room = piece.times_ps.size + 1
+        times, channels = np.empty(room, np.int64), np.empty(room, np.uint8)
+        n = fill_wanted(piece.times_ps, piece.channels, self._wanted, times, channels)
+        return times[:n], channels[:n]
+
+    def _select(
+        self, times: NDArray[np.int64], channels: NDArray[np.uint8], channel: int
+    ) -> NDArray[np.int64]:
+        out = np.empty(times.size + 1, np.int64)
+        return out[: fill_selected(times, channels, channel, out)]
+
+    def _keep_since(
+        self, oldest_ps: int, times: NDArray[np.int64], channels: NDArray[np.uint8]
+    ) -> None:
+        """Keep the tags that a later one can still reach."""
+        i = int(np.searchsorted(self._old_times, np.int64(oldest_ps)))
+        j = int(np.searchsorted(times, np.int64(oldest_ps)))
+        self._old_times = np.concatenate((self._old_times[i:], times[j:]))
+        self._old_channels = np.concatenate((self._old_channels[i:], channels[j:]))
+
+    def _forget(self) -> None:
+        self._old_times = np.empty(0, np.int64)
+        self._old_channels = np.empty(0, np.uint8)
+
+
+def _targets(pairs: Sequence[tuple[int, int]], number: int, width: int) -> NDArray[np.int64]:
+    """What each combination of an earlier and a later channel adds to; see fill_close_pairs."""
+    wanted: dict[int, list[tuple[int, int]]] = {}
+    for index, (start, stop) in enumerate(pairs):
+        wanted.setdefault(start * number + stop, []).append((1, index * width))
+        wanted.setdefault(stop * number + start, []).append((-1, index * width))
+    orders = max(map(len, wanted.values()))
+    targets = np.zeros((2, orders, number**2), np.int64)
+    targets[1] = len(pairs) * width
+    for combination, found in wanted.items():
+        for order, (sign, place) in enumerate(found):
+            targets[:, order, combination] = sign, place
+    return targets
