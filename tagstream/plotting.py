@@ -14,7 +14,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.errors import ResultsError
+from tagstream.estimates import Estimate
 from tagstream.outputs.reader import Run
+from tagstream.settings.measures import DEFAULT_LEVEL
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -41,6 +43,8 @@ STYLE: dict[Any, Any] = {
 INK, BAR, BAND = "black", "0.55", "0.85"
 MANY_BINS = 400  # beyond this, points would hide each other
 CLOSE_BINS = 60  # shown on each side of zero lag then
+FEW_ROWS = 60  # of a history: drawn as points
+G2 = r"$g^{(2)}$"
 SCALES = ((1e12, "s"), (1e9, "ms"), (1e6, "µs"), (1e3, "ns"), (1.0, "ps"))
 
 
@@ -73,8 +77,9 @@ def _figures(run: Run, new: type[Figure]) -> Iterator[tuple[str, Figure]]:
     for name, estimates in run.estimates.items():
         figure = new()
         for span in list(estimates)[:2]:
-            draw_history(figure, run.history(name, span), name, span, estimates[span].unit)
-        yield name, figure
+            draw_history(figure, run.history(name, span), name, span, estimates[span])
+        if figure.axes:  # else no slice has ended yet
+            yield name, figure
         profile = run.profile(name)
         if "peak_number" in profile:
             figure = new()
@@ -95,13 +100,15 @@ def draw_g2(figure: Figure, arrays: Mapping[str, NDArray[Any]], title: str) -> N
         scale, unit = _scale(float(np.abs(arrays["lag"]).max()))
         axes.step(arrays["lag"] / scale, arrays["g2"], where="mid", color=INK, linewidth=0.6)
         axes.set_xlabel(f"lag, stop − start ({unit})")
+        axes.set_ylabel(G2)
+        axes.set_ylim(bottom=0)
         _g2_points(close, arrays, slice(bins // 2 - CLOSE_BINS, bins // 2 + CLOSE_BINS + 1))
-        close.set_title("around zero lag")
-    axes.set_ylabel(r"$g^{(2)}$")
-    axes.set_ylim(bottom=0)
+        close.set_title(f"around zero lag; bars: {_percent(DEFAULT_LEVEL)} intervals")
     axes.margins(x=0.01)
     axes.axhline(1, color=BAR, linestyle=":", zorder=0)
-    axes.set_title(title)
+    axes.set_title(
+        title if bins > MANY_BINS else f"{title}; bars: {_percent(DEFAULT_LEVEL)} intervals"
+    )
 
 
 def _g2_points(axes: Axes, arrays: Mapping[str, NDArray[Any]], bins: slice) -> None:
@@ -109,21 +116,32 @@ def _g2_points(axes: Axes, arrays: Mapping[str, NDArray[Any]], bins: slice) -> N
     columns = (arrays[name][bins] for name in ("g2", "g2_lower", "g2_upper"))
     _points(axes, arrays["lag"][bins] / scale, *columns)
     axes.set_xlabel(f"lag, stop − start ({unit})")
+    axes.set_ylabel(G2)
     axes.set_ylim(bottom=0)
 
 
 def draw_history(
-    figure: Figure, rows: Mapping[str, NDArray[Any]], name: str, span: str, unit: str
+    figure: Figure, rows: Mapping[str, NDArray[Any]], name: str, span: str, found: Estimate
 ) -> None:
-    """An estimate over stream time: the value and the band of its interval."""
+    """An estimate over stream time: the value and the band of its interval.
+
+    Slices without a number, and stretches without slices, leave a hole.
+    """
     count = len(figure.axes) + 1
     axes = figure.add_subplot(2, 1, count, sharex=figure.axes[0] if figure.axes else None)
-    time_s = rows["time_s"]
-    axes.fill_between(time_s, rows["lower"], rows["upper"], color=BAND, linewidth=0)
-    marker = "o" if time_s.size <= 60 else None
-    axes.plot(time_s, rows["value"], color=INK, marker=marker, markerfacecolor="white")
-    axes.set_ylabel(name if unit == "1" else f"{name} ({unit})")
-    axes.set_title("so far" if span == "run" else f"last {span}")
+    holes = np.flatnonzero(rows["begin_ps"][1:] != rows["end_ps"][:-1]) + 1
+    time_s = np.insert(rows["time_s"], holes, rows["time_s"][holes])
+    value, lower, upper = (
+        np.insert(rows[column], holes, np.nan) for column in ("value", "lower", "upper")
+    )
+    axes.fill_between(time_s, lower, upper, color=BAND, linewidth=0)
+    few = "o" if time_s.size <= FEW_ROWS else None
+    axes.plot(time_s, value, color=INK, marker=few, markerfacecolor="white")
+    if few:  # a lone point has no band to be seen
+        axes.vlines(time_s, lower, upper, color=BAR, linewidth=0.9, zorder=1)
+    axes.set_ylabel(name if found.unit == "1" else f"{name} ({found.unit})")
+    over = "the run so far" if span == "run" else f"the last {span}"
+    axes.set_title(f"over {over}; band: {_percent(found.level)} interval")
     axes.set_xlabel("stream time (s)")
     axes.label_outer()
 
@@ -147,7 +165,7 @@ def draw_window_scan(axes: Axes, profile: Mapping[str, NDArray[Any]], name: str)
     axes.set_xlabel(f"width of window ({unit})")
     axes.set_ylabel(name)
     axes.set_ylim(bottom=0)
-    axes.set_title("against window")
+    axes.set_title("against window (wider ones hold the narrower)")
 
 
 def _points(
@@ -158,7 +176,7 @@ def _points(
     upper: NDArray[Any],
 ) -> None:
     axes.vlines(x, lower, upper, color=BAR, linewidth=0.9)
-    axes.plot(x, y, "o", color=INK, markerfacecolor="white", markeredgewidth=0.7)
+    axes.plot(x, y, "o", color=INK, markerfacecolor="white", markeredgewidth=0.7, clip_on=False)
 
 
 def _save(figure: Figure, folder: Path, name: str, formats: Sequence[str]) -> list[Path]:
@@ -169,7 +187,8 @@ def _save(figure: Figure, folder: Path, name: str, formats: Sequence[str]) -> li
             figure.savefig(path, metadata={"Date": None} if path.suffix == ".svg" else None)
     except OSError as error:
         raise ResultsError(
-            f"{folder}: pictures cannot be written: {error.strerror}; choose another --output"
+            f"{folder}: pictures cannot be written: {error.strerror or error}; choose another"
+            " --output"
         ) from error
     return paths
 
@@ -177,6 +196,10 @@ def _save(figure: Figure, folder: Path, name: str, formats: Sequence[str]) -> li
 def _scale(largest_ps: float) -> tuple[float, str]:
     """The unit in which a time is a number of few digits."""
     return next((s for s in SCALES if largest_ps >= 2 * s[0]), SCALES[-1])
+
+
+def _percent(level: float) -> str:
+    return f"{100 * level:.4g} %"
 
 
 def _length(arrays: Mapping[str, NDArray[Any]]) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import asdict
+from dataclasses import asdict, replace
 from datetime import UTC, datetime
 from math import floor, isfinite, log10
 from typing import Any
@@ -33,7 +33,7 @@ def as_json(run: Run) -> dict[str, Any]:
     return {
         "run": str(run.path),
         "live": run.is_live,
-        "about": run.about,
+        "about": _plain(run.about),
         "estimates": {
             name: {span: _plain(asdict(found)) for span, found in spans.items()}
             for name, spans in run.estimates.items()
@@ -42,8 +42,8 @@ def as_json(run: Run) -> dict[str, Any]:
             name: {span: _plain(found) for span, found in spans.items()}
             for name, spans in run.channels.items()
         },
-        "health": run.health,
-        "truth": run.truth,
+        "health": _plain(run.health),
+        "truth": _plain(run.truth),
     }
 
 
@@ -56,6 +56,8 @@ def format_estimate(found: Estimate) -> str:
         return f"< {_rounded(found.upper, found.upper)}{unit}"
     up, down = found.upper - found.value, found.value - found.lower
     step = min(part for part in (up, down, abs(found.value) or 1.0) if part > 0)
+    if not (isfinite(up) or isfinite(down)):
+        return f"{found.value:.6g}{unit}"
     if not isfinite(up):
         return f"{_rounded(found.value, step)} +inf -{_rounded(down, step)}{unit}"
     value, plus, minus = (_rounded(part, step) for part in (found.value, up, down))
@@ -78,24 +80,35 @@ def _estimate_lines(name: str, spans: Mapping[str, Estimate]) -> Iterator[str]:
     for span, found in spans.items():
         basis = found.reason or f"{found.counts} counts"
         yield f"  {span:<10} {format_estimate(found):<{COLUMN}} {basis}"
-        if found.raw_value != found.value and found.interval != "none":
-            yield f"  {'':<10} {f'{found.raw_value:.6g}':<{COLUMN}} before corrections"
+        if found.interval != "none" and isfinite(found.raw_value) and _raw(found) != found:
+            yield f"  {'':<10} {format_estimate(_raw(found)):<{COLUMN}} before corrections"
         if found.note:
             yield f"  {'':<10} ! {found.note}"
-    first = next(iter(spans.values()), None)
-    if first is not None:
-        yield f"  {first.level:.4g} interval; {first.method}"
+    if not spans:
+        yield "  no slice has ended yet"
+    for found in list(spans.values())[:1]:
+        yield f"  {found.level:.4g} interval; {found.method}"
+
+
+def _raw(found: Estimate) -> Estimate:
+    """The estimate before its corrections."""
+    return replace(found, value=found.raw_value, lower=found.raw_lower, upper=found.raw_upper)
 
 
 def _channel_lines(run: Run) -> Iterator[str]:
     channels = run.channels
     spans = list(next(iter(channels.values()), {}))
     heads = [f"{f'{span}, counts/s':>18}" for span in spans]
-    yield f"{'channel':<16}{''.join(heads)}{'counts in the run':>20}"
+    width = max(14, *map(len, channels)) + 2
+    yield f"{'channel':<{width}}{''.join(heads)}{'counts in the run':>20}"
     for name, found in channels.items():
-        rates = [f"{found[span]['rate_hz']:>18.7g}" for span in spans]
+        rates = [f"{_rate(found[span]['rate_hz']):>18}" for span in spans]
         total = f"{found['run']['counts']:>20}" if "run" in found else ""
-        yield f"{name:<16}{''.join(rates)}{total}"
+        yield f"{name:<{width}}{''.join(rates)}{total}"
+
+
+def _rate(rate_hz: float) -> str:
+    return f"{rate_hz:.7g}" if isfinite(rate_hz) else "-"
 
 
 def _health_lines(health: Mapping[str, Any]) -> Iterator[str]:

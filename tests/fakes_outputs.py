@@ -53,7 +53,9 @@ def make_estimate(**changes: Any) -> Estimate:
         "unit": "1",
         "counts": 40,
     }
-    return Estimate(**{"raw_value": 0.1, "raw_lower": 1 / 11, "raw_upper": 1 / 9, **fields, **changes})
+    return Estimate(
+        **{"raw_value": 0.1, "raw_lower": 1 / 11, "raw_upper": 1 / 9, **fields, **changes}
+    )
 
 
 def make_estimates(step: int = 0, profile: bool = False) -> dict[str, tuple[Estimate, ...]]:

@@ -33,8 +33,8 @@ class Conditioner:
         self._dead_times = np.array([c.dead_time_ps for c in settings.channels.values()], np.int64)
         self._last_kept = np.zeros(len(delays), np.int64)
         self._ever_kept = np.zeros(len(delays), np.uint8)
-        self._judge = Judge(settings, counters)
         self._order = Order()
+        self._judge = Judge(settings, counters, self._order)
         self._stretch: Stretch | None = None
         self._vouched_to_ps: int | None = None  # raw end of the last complete interval
         self.live_end_ps: int | None = None  # end of the last block
@@ -48,11 +48,9 @@ class Conditioner:
             self.counters.drop("in_gap", piece.times_ps.size)
             return
         self._open_stretch(piece)
-        for judged in self._judge.judge(piece):
-            if judged.after_jump:
-                yield from self._end_stretch()
-                self._open_stretch(piece)
-            self._order.push(judged.times_ps, judged.channels)
+        for _ in self._judge.judge(piece):
+            yield from self._end_stretch()
+            self._open_stretch(piece)
         yield from self._release(piece)
         self.counters.in_flight = len(self._order) + self._judge.pending
 

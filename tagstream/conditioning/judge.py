@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.conditioning import kernels as k
+from tagstream.conditioning.order import Order
 from tagstream.counters import Counters
 from tagstream.feeds import Arrivals
 from tagstream.settings import Channel, Settings
@@ -17,24 +18,25 @@ from tagstream.units import TIME_LIMIT_PS
 EVERYWHERE = (-TIME_LIMIT_PS, TIME_LIMIT_PS)
 
 
-@dataclass(frozen=True, slots=True)
-class Judged:
-    """Good tags in arrival order, delays added. `after_jump`: a gap lies just before them."""
-
-    times_ps: NDArray[np.int64]
-    channels: NDArray[np.uint8]
-    after_jump: bool
-
-
 class Judge:
-    """Decides each tag's fate from the tags before it; see `kernels.fill_judged`."""
+    """Decides each tag's fate from the tags before it; see `kernels.fill_judged`.
 
-    def __init__(self, settings: Settings, counters: Counters) -> None:
+    Good tags go to `order`, with channel and delay.
+    """
+
+    def __init__(self, settings: Settings, counters: Counters, order: Order) -> None:
         self._counters = counters
+        self._order = order
         self._slice_ps = settings.rolling.slice_ps
         self._disorder_ps = settings.conditioning.max_disorder_ps
         self._jump_ps = settings.conditioning.max_jump_ps
-        self._channel_of, self._delays_ps = channel_tables(settings.channels)
+        self._channels_of = {
+            np.dtype(np.uint8): channel_table(settings.channels, 1 << 8),
+            np.dtype(np.uint16): channel_table(settings.channels, 1 << 16),
+        }
+        self._delays_ps = np.zeros(256, np.int64)
+        for index, channel in enumerate(settings.channels.values()):
+            self._delays_ps[index] = channel.delay_ps
         self._state = np.zeros(k.STATE_SIZE, np.int64)
         self._pending_times = np.zeros(k.CONFIRMATIONS + 1, np.int64)
         self._pending_inputs = np.zeros(k.CONFIRMATIONS + 1, np.int64)
@@ -58,14 +60,14 @@ class Judge:
         offset = int(self._state[k.OFFSET])
         return piece.begin_ps + offset, piece.end_ps + offset
 
-    def judge(self, piece: Arrivals) -> Iterator[Judged]:
-        """The good tags of a piece, split where a jump in time was believed."""
+    def judge(self, piece: Arrivals) -> Iterator[None]:
+        """Send the good tags of a piece to the order. Yields where time has jumped and tags may
+        be missing: the caller then takes from the order what came before."""
         vouched = piece.begin_ps is not None
         interval = self.interval(piece)
         times, inputs = piece.times_ps, piece.inputs
         while True:
-            used, judged = self._run(times, inputs, interval)
-            yield judged
+            used = self._run(times, inputs, interval)
             if self.pending <= k.CONFIRMATIONS:
                 break
             times, inputs = times[used:], inputs[used:]
@@ -78,21 +80,18 @@ class Judge:
         self._drop_pending()
 
     def _run(
-        self,
-        times: NDArray[np.int64],
-        inputs: NDArray[np.generic],
-        interval: tuple[int, int],
-        after_jump: bool = False,
-    ) -> tuple[int, Judged]:
-        room = times.size + k.CONFIRMATIONS + 1
-        out_times, out_channels = np.empty(room, np.int64), np.empty(room, np.uint8)
+        self, times: NDArray[np.int64], inputs: NDArray[Any], interval: tuple[int, int]
+    ) -> int:
+        held = len(self._order)
+        out_times, out_channels = self._order.room(times.size)
         counts = np.zeros(k.COUNT_SIZE, np.int64)
+        counts[k.KEPT] = held
         limits = (self._disorder_ps, self._jump_ps, TIME_LIMIT_PS, *interval)
         used = k.fill_judged(
             times,
             inputs,
             np.array(limits, np.int64),
-            self._channel_of,
+            self._channels_of[inputs.dtype],
             self._delays_ps,
             self._state,
             self._pending_times,
@@ -101,14 +100,14 @@ class Judge:
             out_channels,
             counts,
         )
+        self._order.take(int(counts[k.KEPT]), bool(counts[k.UNORDERED]))
         for reason, slot in _REASONS.items():
             self._counters.drop(reason, int(counts[slot]))
         largest = int(self._state[k.DISORDER])
         self._counters.largest_disorder_ps = max(self._counters.largest_disorder_ps, largest)
-        kept = int(counts[k.KEPT])
-        return used, Judged(out_times[:kept], out_channels[:kept], after_jump)
+        return used
 
-    def _confirmed(self, vouched: bool) -> Iterator[Judged]:
+    def _confirmed(self, vouched: bool) -> Iterator[None]:
         """Take the pending tags as good: time jumped.
 
         Forwards, tags may be missing in between, unless the source vouches for the interval.
@@ -120,14 +119,16 @@ class Judge:
             self._drop_pending()
             return
         count = self.pending
-        times, inputs = self._pending_times[:count].copy(), self._pending_inputs[:count].copy()
+        times = self._pending_times[:count].copy()
+        inputs = self._pending_inputs[:count].astype(np.uint16)
         if back:
             next_slice = (int(self._state[k.LATEST]) // self._slice_ps + 1) * self._slice_ps
             self._state[k.OFFSET] = next_slice - int(times.min())
         self._state[k.STARTED] = 0
         self._state[k.PENDING] = 0
-        _, judged = self._run(times, inputs, EVERYWHERE, after_jump=not vouched)
-        yield judged
+        if not vouched:
+            yield
+        self._run(times, inputs, EVERYWHERE)
 
     def _drop_pending(self) -> None:
         reason = "late" if self._state[k.PENDING_BACK] else "jump"
@@ -144,11 +145,10 @@ _REASONS = {
 }
 
 
-def channel_tables(
-    channels: Mapping[str, Channel],
-) -> tuple[NDArray[np.uint8], NDArray[np.int64]]:
-    """Channel index by input number (uint8), and delay by channel (int64, ps)."""
-    channel_of = np.full(1 + max(c.input for c in channels.values()), k.UNLISTED_INPUT, np.uint8)
+def channel_table(channels: Mapping[str, Channel], inputs: int) -> NDArray[np.uint8]:
+    """Channel index by input number, uint8, for inputs below `inputs`."""
+    table = np.full(inputs, k.UNLISTED_INPUT, np.uint8)
     for index, channel in enumerate(channels.values()):
-        channel_of[channel.input] = index
-    return channel_of, np.array([c.delay_ps for c in channels.values()], np.int64)
+        if channel.input < inputs:
+            table[channel.input] = index
+    return table

@@ -17,11 +17,60 @@ from tagstream.compiled import kernel
 LATEST, STARTED, OFFSET, PENDING, PENDING_LATEST, PENDING_BACK, DISORDER = range(7)
 STATE_SIZE = 7
 # Slots of its counts, int64.
-KEPT, LATE, JUMP, OVERFLOW, OUTSIDE, UNLISTED = range(6)
-COUNT_SIZE = 6
+KEPT, LATE, JUMP, OVERFLOW, OUTSIDE, UNLISTED, UNORDERED = range(7)
+COUNT_SIZE = 7
 
 CONFIRMATIONS = 16  # tags that must agree with a first one before a jump in time is believed
 UNLISTED_INPUT = 255  # entry of the table of channels for an input without a channel
+
+
+@kernel
+def fill_plain(
+    times_ps: NDArray[np.int64],
+    inputs: NDArray[Any],
+    first: int,
+    rules: NDArray[np.int64],
+    channel_of: NDArray[np.uint8],
+    delays_ps: NDArray[np.int64],
+    state: NDArray[np.int64],
+    out_times: NDArray[np.int64],
+    out_channels: NDArray[np.uint8],
+    counts: NDArray[np.int64],
+) -> int:
+    """Take tags from `first` on while nothing is wrong with their times.
+
+    Arguments as in `fill_judged`. Returns the index of the first tag that is late, far from the
+    others or outside the interval, else the number of tags. Cost: one pass without rare cases.
+    """
+    disorder, jump, limit = rules[0], rules[1], rules[2]
+    offset = state[2]
+    begin = max(rules[3], -limit) - offset
+    end = min(rules[4], limit + 1) - offset
+    latest = state[0] - offset
+    largest, kept, unlisted, unordered = state[6], counts[0], counts[5], counts[6]
+    last = out_times[np.uint64(kept - 1)] if kept > 0 else -limit - limit // 256
+    i = np.int64(first)
+    size = np.int64(times_ps.size)
+    while i < size:
+        t = times_ps[np.uint64(i)]
+        ahead = t - latest
+        if ahead > jump or ahead < -disorder or t < begin or t >= end:
+            break
+        latest = max(latest, t)
+        largest = max(largest, -ahead)
+        channel = channel_of[inputs[np.uint64(i)]]
+        listed = channel != UNLISTED_INPUT
+        moved = t + offset + delays_ps[channel]
+        out_times[np.uint64(kept)] = moved
+        out_channels[np.uint64(kept)] = channel
+        unordered |= np.int64(listed & (moved < last))
+        last = moved if listed else last
+        kept += np.int64(listed)
+        unlisted += 1 - np.int64(listed)
+        i += 1
+    state[0], state[6] = latest + offset, largest
+    counts[0], counts[5], counts[6] = kept, unlisted, unordered
+    return i
 
 
 @kernel
@@ -42,11 +91,13 @@ def fill_judged(
 
     times_ps, inputs: n tags in arrival order. rules: int64 [max_disorder, max_jump, limit,
     begin, end] in ps, the interval being that of which the source vouches (or the whole range).
-    channel_of: uint8, by input, UNLISTED_INPUT for none. delays_ps: int64, by channel.
-    state: int64 (STATE_SIZE), carried from call to call. pending_*: int64
-    (CONFIRMATIONS + 1), tags that are far from all others and not yet believed.
-    out_*: at least n + CONFIRMATIONS + 1 long. counts: int64 (COUNT_SIZE), zeroed by the caller;
-    counts[KEPT] tags are in out_* on return, counts of drops by reason.
+    channel_of: uint8, one entry for each value that the type of `inputs` can have,
+    UNLISTED_INPUT for none. delays_ps: int64, 256, by channel. state: int64 (STATE_SIZE),
+    carried from call to call. pending_*: int64 (CONFIRMATIONS + 1), tags that are far from all
+    others and not yet believed. out_*: room for n more tags than the counts[KEPT] that they
+    already hold. counts: int64 (COUNT_SIZE), otherwise zeroed by the caller; on return
+    counts[KEPT] tags are in out_*, counts[UNORDERED] says whether one is before the one before
+    it, the others count drops by reason.
 
     A tag is late when it lies more than max_disorder before the latest one so far. A tag more
     than max_jump ahead of the latest, or more than max_jump before it, is held; it is believed
@@ -58,62 +109,98 @@ def fill_judged(
     Cost: one pass.
     """
     disorder, jump, limit, begin, end = rules[0], rules[1], rules[2], rules[3], rules[4]
-    latest, started, offset = state[0], state[1], state[2]
-    kept = counts[0]
-    n = times_ps.size
-    for i in range(n):
-        t = times_ps[i] + offset
+    i = np.int64(0)
+    size = np.int64(times_ps.size)
+    while i < size:
+        if state[1] == 1 and state[3] == 0:
+            i = fill_plain(
+                times_ps,
+                inputs,
+                i,
+                rules,
+                channel_of,
+                delays_ps,
+                state,
+                out_times,
+                out_channels,
+                counts,
+            )
+            if i == size:
+                break
+        t = times_ps[i]
         if t > limit or t < -limit:
             counts[3] += 1
+            i += 1
             continue
-        if t < begin or t >= end:
-            counts[4] += 1
+        t += state[2]
+        if t > limit or t < begin or t >= end:
+            counts[3 if t > limit else 4] += 1
+            i += 1
             continue
-        if started == 0:
-            started = 1
-            latest = t
-        ahead = t - latest > jump
-        back = latest - t > jump
+        if state[1] == 0:
+            state[0], state[1] = t, 1
+            if state[3] == 0:
+                continue  # the first tag is plain by its own measure
+        far = abs(t - state[0]) > jump
         if state[3] > 0:
-            reference = state[4]
-            agrees = t >= reference - disorder and t - reference <= jump
-            if (ahead or back) and agrees:
+            if far and t >= state[4] - disorder and t - state[4] <= jump:
                 pending_times[state[3]] = times_ps[i]
                 pending_inputs[state[3]] = np.int64(inputs[i])
                 state[3] += 1
-                state[4] = max(reference, t)
+                state[4] = max(state[4], t)
+                i += 1
                 if state[3] > CONFIRMATIONS:
-                    state[0], state[1] = latest, started
-                    counts[0] = kept
-                    return i + 1
+                    return i
                 continue
             counts[1 if state[5] == 1 else 2] += state[3]
             state[3] = 0
-        if ahead or back:
+        if far:
             pending_times[0] = times_ps[i]
             pending_inputs[0] = np.int64(inputs[i])
-            state[3] = 1
-            state[4] = t
-            state[5] = 1 if back else 0
-            continue
-        if t > latest:
-            latest = t
-        elif latest - t > state[6]:
-            state[6] = latest - t
-        if latest - t > disorder:
+            state[3], state[4] = 1, t
+            state[5] = 1 if t < state[0] else 0
+            i += 1
+        elif state[0] - t > disorder:
+            state[6] = max(state[6], state[0] - t)
             counts[1] += 1
-            continue
-        number = np.int64(inputs[i])
-        channel = channel_of[number] if number < channel_of.size else np.uint8(UNLISTED_INPUT)
-        if channel == UNLISTED_INPUT:
-            counts[5] += 1
-            continue
-        out_times[kept] = t + delays_ps[channel]
-        out_channels[kept] = channel
-        kept += 1
-    state[0], state[1] = latest, started
-    counts[0] = kept
-    return n
+            i += 1
+        # else the tag is plain again: the loop takes it with those that follow
+    return i
+
+
+@kernel
+def fill_bucketed(
+    times_ps: NDArray[np.int64],
+    channels: NDArray[np.uint8],
+    starts: NDArray[np.int64],
+    out_times: NDArray[np.int64],
+    out_channels: NDArray[np.uint8],
+) -> None:
+    """Copy tags nearly into order: by narrow intervals of time, in arrival order inside each.
+
+    times_ps, channels: n > 0. starts: int64, scratch, a power of two of intervals plus one.
+    out_*: n. Afterwards tags are out of order only among the few of one interval, and equal
+    times are in arrival order, so that `fill_ordered` has few moves left. Cost: three passes,
+    whatever the disorder.
+    """
+    least, most = times_ps[0], times_ps[0]
+    for t in times_ps:
+        least = min(least, t)
+        most = max(most, t)
+    shift = np.int64(0)
+    while ((most - least) >> shift) >= starts.size - 1:
+        shift += 1
+    starts[:] = 0
+    for t in times_ps:
+        starts[np.uint64(((t - least) >> shift) + 1)] += 1
+    for i in range(1, starts.size):
+        starts[i] += starts[i - 1]
+    for i in range(times_ps.size):
+        interval = np.uint64((times_ps[i] - least) >> shift)
+        place = np.uint64(starts[interval])
+        starts[interval] += 1
+        out_times[place] = times_ps[i]
+        out_channels[place] = channels[i]
 
 
 @kernel

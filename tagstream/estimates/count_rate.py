@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import replace
 from typing import Any
 
+from tagstream.errors import SettingsError
 from tagstream.estimates import Estimate, Estimator, no_estimate
 from tagstream.estimates.intervals import Bounds, poisson_interval
 from tagstream.settings.measures import CountRate as CountRateSettings
@@ -22,6 +23,9 @@ class CountRate(Estimator):
     Detection and Measurement, ch. 4). The counts of such a detector scatter less than Poisson:
     variance / mean = (1 - m tau)^2 (Muller, Nucl. Instrum. Methods 112, 47 (1973)), so the
     interval is narrowed by 1 - m tau before it is carried through the formula.
+
+    settings.dead_time_ps holds the dead time to use, that of the channel written in by the
+    caller where the estimate has none of its own. Raises SettingsError where there is none.
     """
 
     unit = "Hz"
@@ -34,10 +38,9 @@ class CountRate(Estimator):
     ) -> None:
         self._level, self._kind = settings.level, settings.interval
         self._channel = channels[settings.channel]
-        corrected = settings.dead_time_model == "non-paralyzable"
-        self._dead_time_ps = settings.dead_time_ps or 0 if corrected else 0
+        self._dead_time_ps = _dead_time_ps(settings)
         self._method = f"counts over live time; Poisson {settings.interval}"
-        if corrected:
+        if self._dead_time_ps:
             dead_time = format_time(self._dead_time_ps)
             self._method += f"; non-paralyzable dead time {dead_time}, its narrowing included"
 
@@ -51,10 +54,11 @@ class CountRate(Estimator):
         rate = counts * PS_PER_S / live_time_ps
         live_fraction = 1 - rate * self._dead_time_ps / PS_PER_S
         if live_fraction <= 0:
-            text = f"{rate:.6g} counts a second are more than this dead time allows"
+            dead_time = format_time(self._dead_time_ps)
+            text = f"{rate:.6g} counts a second are more than this dead time allows ({dead_time})"
             return self._none(text)
         estimate = self._estimate(rate, self._narrowed(rate, raw, live_fraction), raw, counts)
-        few = f"only {counts} counts" if counts < FEW_TAGS else ""
+        few = f"only {counts} count{'' if counts == 1 else 's'}" if counts < FEW_TAGS else ""
         return replace(estimate, note=few)
 
     def _estimate(self, rate: float, narrow: Bounds, raw: Bounds, counts: int) -> Estimate:
@@ -86,3 +90,12 @@ class CountRate(Estimator):
 
     def _none(self, reason: str) -> Estimate:
         return no_estimate(reason, level=self._level, method=self._method, unit=self.unit)
+
+
+def _dead_time_ps(settings: CountRateSettings) -> int:
+    if settings.dead_time_model == "none":
+        return 0
+    if not settings.dead_time_ps:
+        text = f"give dead_time here or in [channels.{settings.channel}]"
+        raise SettingsError([f"[[estimate]] {settings.name} dead_time: missing; {text}"])
+    return settings.dead_time_ps

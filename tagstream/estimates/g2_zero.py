@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from fractions import Fraction
 from typing import Any
-
-import numpy as np
 
 from tagstream.estimates import Estimate, Estimator, no_estimate
 from tagstream.estimates.intervals import Bounds, poisson_interval
-from tagstream.estimates.normalisation import expected_pairs, in_windows
+from tagstream.estimates.normalisation import NO_PAIRS, expected_pairs, expected_within
 from tagstream.settings.measures import CrossCorrelation
 from tagstream.settings.measures import G2Zero as G2ZeroSettings
 from tagstream.tallies import Sums
@@ -19,8 +18,9 @@ from tagstream.units import format_time
 class G2Zero(Estimator):
     """Pairs in a window around zero lag over the pairs that independent light would give.
 
-    The window is a whole number m of bins: the largest that fits, -m/2 to m/2 - 1 when m is
-    even, as a coincidence window [-w/2, w/2) is.
+    The window is the largest whole number m of bins that fits, so its width is m bins. Bins are
+    centred on multiples of `bin`: an odd m is centred on zero; an even m takes bins -m/2 to
+    m/2 - 1 and is centred half a bin before zero, which `method` then says.
 
     With a signal fraction rho = S / (S + B), g2 = (C - (1 - rho^2)) / rho^2 takes uncorrelated
     background out of the measured C (Brouri et al., Opt. Lett. 25, 1294 (2000)). Nothing is
@@ -38,21 +38,16 @@ class G2Zero(Estimator):
         self._settings = settings
         self._tally: CrossCorrelation = tallies[settings.tally]
         self._width = (settings.window_ps or self._tally.bin_ps) // self._tally.bin_ps
-        self._first = np.array([self._tally.bins_each_side - self._width // 2], np.int64)
-        window = format_time(self._width * self._tally.bin_ps)
-        self._method = f"window {window} around zero lag; Poisson {settings.interval}"
-        self._method += f"; normalised by {self._tally.normalisation}"
-        if settings.signal_fraction is not None:
-            self._method += f"; background removed, signal fraction {settings.signal_fraction:g}"
+        self._first = self._tally.bins_each_side - self._width // 2
+        self._method = _method(settings, self._tally, self._width)
 
     def __call__(self, sums: Mapping[str, Sums]) -> Estimate:
         tally, level = sums[self._tally.name], self._settings.level
-        counts = int(in_windows(tally["counts"], self._first, self._width)[0])
+        counts = int(tally["counts"][self._first : self._first + self._width].sum())
         pairs = expected_pairs(tally, self._tally)
-        expected = float(in_windows(pairs, self._first, self._width)[0])
+        expected = expected_within(pairs, self._first, self._width)
         if expected <= 0:
-            reason = "no live time, or no counts in one of the channels"
-            return no_estimate(reason, level=level, method=self._method, unit=self.unit)
+            return no_estimate(NO_PAIRS, level=level, method=self._method, unit=self.unit)
         raw = poisson_interval(counts, level, self._settings.interval).times(1 / expected)
         return self._corrected(counts, counts / expected, raw)
 
@@ -74,3 +69,13 @@ class G2Zero(Estimator):
             raw_upper=raw.upper,
             note=note,
         )
+
+
+def _method(settings: G2ZeroSettings, tally: CrossCorrelation, width: int) -> str:
+    text = f"window {format_time(width * tally.bin_ps)} around zero lag"
+    if width % 2 == 0:
+        text += f", its centre {format_time(Fraction(tally.bin_ps, 2))} before it"
+    text += f"; Poisson {settings.interval}; normalised by {tally.normalisation}"
+    if settings.signal_fraction is not None:
+        text += f"; background removed, signal fraction {settings.signal_fraction:g}"
+    return text

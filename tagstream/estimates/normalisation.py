@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.settings.measures import CrossCorrelation
 from tagstream.tallies import Sums
+
+NO_PAIRS = "no live time, or no slice with counts in both channels"
 
 
 def expected_pairs(sums: Sums, tally: CrossCorrelation) -> NDArray[np.float64]:
@@ -29,9 +29,8 @@ def expected_pairs(sums: Sums, tally: CrossCorrelation) -> NDArray[np.float64]:
     return np.asarray(per_ps * sums["pair_time_ps"], np.float64)
 
 
-def in_windows(values: NDArray[Any], first_bins: NDArray[np.int64], width: int) -> NDArray[Any]:
-    """Sums of `width` bins from each of `first_bins` on; a () array is the same in all bins."""
-    if values.ndim == 0:
-        return np.full(first_bins.size, values * width)
-    total = np.concatenate(([0], np.cumsum(values)))
-    return np.asarray(total[first_bins + width] - total[first_bins])
+def expected_within(expected: NDArray[np.float64], first: int, width: int) -> float:
+    """Expected pairs in `width` bins from `first` on; a () array is the same in all bins."""
+    if expected.ndim == 0:
+        return float(expected) * width
+    return float(expected[first : first + width].sum())

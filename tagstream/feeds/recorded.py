@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tagstream import units
-from tagstream.errors import SettingsError
+from tagstream.errors import InputError, SettingsError
 from tagstream.feeds import Arrivals, TimeBase
 from tagstream.recording import RecordedPiece, RecordingHeader, RecordingReader
 from tagstream.settings.feeds import RecordingFeed as RecordingSettings
@@ -54,6 +54,8 @@ class RecordingsFeed:
                         continue
                     yield self._arrivals(piece, gap)
                     gap = False
+        if self._shift is None:
+            raise InputError(f"{self._segments[0].path}: holds no tags and no intervals")
 
     def _number(self, index: int) -> int:
         return self._segments[index].header.segment

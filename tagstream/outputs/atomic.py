@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 from pathlib import Path
 
@@ -27,4 +28,6 @@ def replace_file(path: Path, content: bytes) -> None:
         finally:
             os.close(folder)
     except OSError as error:
+        with contextlib.suppress(OSError):
+            fresh.unlink()  # a part of it would take the room that is missing
         raise cannot_write(path, error) from error

@@ -15,6 +15,7 @@ from tagstream.estimates import Estimate
 from tagstream.outputs import Arrays, RunHeader, Snapshot, SpanView
 from tagstream.outputs import layout as at
 from tagstream.outputs.recent import RecentValues
+from tagstream.settings.measures import DEFAULT_LEVEL
 from tagstream.units import PS_PER_S
 
 TEXT = h5py.string_dtype("utf-8")
@@ -43,7 +44,8 @@ def latest_image(header: RunHeader, meta: Meta, snapshot: Snapshot, recent: Rece
         truth = _group(entry, at.TRUTH, "NXcollection") if header.truth else None
         for name, value in header.truth.items():
             _put(truth, name, value if isinstance(value, int | float | str) else str(value))
-        entry.attrs["default"] = _default(entry, header)
+        if default := _default(entry, header):
+            entry.attrs["default"] = default
         file.flush()
         return bytes(file.id.get_file_image())
 
@@ -53,6 +55,7 @@ def _write_entry(entry: h5py.Group, header: RunHeader, meta: Meta) -> None:
     _put(entry, "settings", header.settings_text)
     _put(entry, "tick", header.tick)
     _put(entry, "slice_ps", header.slice_ps)
+    _put_texts(entry, "spans", list(header.spans))
     if header.origin_ticks is not None:
         _put(entry, "origin_ticks", header.origin_ticks)
     if header.origin_utc is not None:
@@ -63,13 +66,15 @@ def _write_entry(entry: h5py.Group, header: RunHeader, meta: Meta) -> None:
     entry["program_name"].attrs["version"] = meta["version"]
 
 
-def _default(entry: h5py.Group, header: RunHeader) -> str:
-    """What a viewer shows first: a histogram, else the history of an estimate."""
+def _default(entry: h5py.Group, header: RunHeader) -> str | None:
+    """What a viewer shows first: a histogram, else the history of an estimate, if any."""
     for tally in header.tallies:
         if tally in entry:
             return tally
-    entry[at.ESTIMATES].attrs["default"] = next(iter(header.estimates), "")
-    return at.ESTIMATES
+    for estimate in header.estimates:
+        entry[at.ESTIMATES].attrs["default"] = estimate
+        return at.ESTIMATES
+    return None
 
 
 def _write_tally(
@@ -87,6 +92,10 @@ def _write_tally(
     _put(group, "live_time_s", int(arrays["live_time_ps"]) / PS_PER_S)
     _put(group, "begin_ps", span.begin_ps)
     _put(group, "end_ps", span.end_ps)
+    group["counts"].attrs["long_name"] = "pairs"
+    for name in ("g2", "g2_errors", "g2_lower", "g2_upper"):
+        group[name].attrs["units"] = "1"
+    group["g2_lower"].attrs["level"] = group["g2_upper"].attrs["level"] = DEFAULT_LEVEL
     group.attrs["signal"] = "g2"
     group.attrs["auxiliary_signals"] = np.array(["counts"], dtype=TEXT)
     group.attrs["axes"] = np.array(["lag"], dtype=TEXT)
@@ -108,6 +117,7 @@ def _write_estimates(
         _put_texts(inner, "spans", list(header.spans[: len(found)]))
         for key in at.ESTIMATE_NUMBERS:
             _put(inner, key, np.array([getattr(e, key) for e in found], np.float64))
+            inner[key].attrs["units"] = "1" if key == "level" else unit
         _put(inner, "counts", np.array([e.counts for e in found], np.int64))
         for key in at.ESTIMATE_TEXTS:
             _put_texts(inner, key, [getattr(e, key) for e in found])
@@ -121,7 +131,8 @@ def _write_history(group: h5py.Group, name: str, unit: str, recent: RecentValues
     for key, values in (("time", time_s), ("value", value), ("lower", lower), ("upper", upper)):
         _put(group, key, values)
     _put(group, "value_errors", (upper - lower) / 2)
-    group["value"].attrs["units"] = unit
+    for key in ("value", "lower", "upper", "value_errors"):
+        group[key].attrs["units"] = unit
     group["value"].attrs["long_name"] = name
     group.attrs["signal"] = "value"
     group.attrs["axes"] = np.array(["time"], dtype=TEXT)
@@ -143,10 +154,15 @@ def _write_profile(group: h5py.Group, estimate: Estimate) -> None:
 
 def _write_channels(group: h5py.Group, header: RunHeader, snapshot: Snapshot) -> None:
     spans = snapshot.spans
-    live_time_ps = np.array([span.live_time_ps for span in spans], np.int64)
+    begin_ps, end_ps, live_time_ps = (
+        np.array([getattr(span, key) for span in spans], np.int64)
+        for key in ("begin_ps", "end_ps", "live_time_ps")
+    )
     for index, name in enumerate(header.channels):
         inner = _group(group, name, "NXdetector")
         _put_texts(inner, "spans", [span.name for span in spans])
+        _put(inner, "begin_ps", begin_ps)
+        _put(inner, "end_ps", end_ps)
         _put(inner, "counts", np.array([span.counts[index] for span in spans], np.int64))
         _put(inner, "rate_hz", np.array([span.rate_hz[index] for span in spans], np.float64))
         _put(inner, "live_time_ps", live_time_ps)
@@ -173,8 +189,8 @@ def _put(group: h5py.Group, name: str, value: Any) -> None:
         return
     array = np.asarray(value)
     dataset = group.create_dataset(name, data=array, dtype=array.dtype)
-    if name in at.UNITS:
-        dataset.attrs["units"] = at.UNITS[name]
+    if unit := at.unit_of(name):
+        dataset.attrs["units"] = unit
     if name in at.LONG_NAMES:
         dataset.attrs["long_name"] = at.LONG_NAMES[name]
 

@@ -3,13 +3,15 @@
 /                             NXroot, default = "run"
 /run                          NXentry; default = the first tally, else /run/estimates
     title, start_time, end_time (at the end), program_name (version), settings
-    run_uuid, updated_utc, host, pid, tick, slice_ps, origin_ticks, origin_utc (if known)
+    run_uuid, updated_utc, host, pid, tick, slice_ps, spans, origin_ticks, origin_utc (if
+    known)
 /run/<tally>                  NXdata, span "run"; other spans /run/<tally>_<span>, as hbt_10s
 /run/estimates/<estimate>     one entry per span in: spans, value, lower, upper, level, counts,
     interval, method, reason, note, raw_value, raw_lower, raw_upper; unit
     history                   NXdata: the value over the last hour, for the shortest span
     profile                   NXdata: what the value of span "run" was made from
-/run/channels/<channel>       per span: spans, counts, rate_hz, live_time_ps, live_time_s
+/run/channels/<channel>       per span: spans, begin_ps, end_ps, counts, rate_hz, live_time_ps,
+    live_time_s
 /run/health                   counters and state, scalars
 /run/truth                    what a simulation knows, scalars
 """
@@ -29,25 +31,11 @@ HISTORY_NUMBERS = "numbers"
 UNITS = {
     "lag": "ps",
     "lag_edges": "ps",
-    "pair_time_ps": "ps",
-    "live_time_ps": "ps",
-    "live_time_s": "s",
-    "gap_time_ps": "ps",
-    "gap_time_s": "s",
-    "begin_ps": "ps",
-    "end_ps": "ps",
-    "rate_hz": "Hz",
-    "last_tag_ps": "ps",
-    "largest_disorder_ps": "ps",
-    "lag_behind_s": "s",
-    "window_width_ps": "ps",
-    "period_ps": "ps",
-    "slice_ps": "ps",
     "time": "s",
 }
+SUFFIX_UNITS = {"_ps": "ps", "_s": "s", "_hz": "Hz"}
 LONG_NAMES = {
     "lag": "lag = t(stop) - t(start) (ps)",
-    "counts": "pairs",
     "g2": "g2",
     "time": "stream time (s)",
     "peak_number": "number of the peak",
@@ -58,6 +46,12 @@ ESTIMATE_TEXTS = ("interval", "method", "reason", "note")
 HISTORY_COLUMNS = ("value", "lower", "upper")
 HOUR_S = 3600
 MOST_HISTORY = 3600  # points of the history inside latest.h5
+
+
+def unit_of(name: str) -> str | None:
+    """The unit of a dataset: that of its suffix, as in live_time_ps; None for a plain number."""
+    ends = (unit for suffix, unit in SUFFIX_UNITS.items() if name.endswith(suffix))
+    return UNITS.get(name) or next(ends, None)
 
 
 def span_suffix(span: str) -> str:

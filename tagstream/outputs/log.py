@@ -3,11 +3,13 @@
 Fixed fields: utc, level ("info" or "warning"), event, stream_ps (null if none). Events:
 start (a run began), warning (settings or tags that may surprise), gap (tags may have been lost;
 `gaps` counts them so far), end (with the health at the end, and `error` if there was one).
-Gaps that follow each other within a second of wall time are folded into one line with `folded`.
+Gaps that follow each other within a second of wall time are folded into one line; `folded` says
+how many it stands for, the other fields are those of the last.
 """
 
 from __future__ import annotations
 
+import contextlib
 import json
 from collections.abc import Callable
 from datetime import UTC, datetime
@@ -26,6 +28,7 @@ class EventLog:
 
     def __init__(self, path: Path, clock: Callable[[], float]) -> None:
         self._path, self._clock = path, clock
+        self._broken = False  # once told that lines cannot be written, the rest is let go
         self._last: dict[str, float] = {}
         self._folded: dict[str, tuple[int, int | None, dict[str, Any]]] = {}
         try:
@@ -45,17 +48,28 @@ class EventLog:
         self._unfold()
         self._write(name, stream_ps, fields)
 
+    def settle(self) -> None:
+        """Write what has been folded for a second, so that it waits for no other event."""
+        now = self._clock()
+        if all(now - self._last[name] >= FOLD_S for name in self._folded):
+            self._unfold()
+
     def close(self) -> None:
         """Write what was folded, and close the file."""
-        self._unfold()
-        self._file.close()
+        try:
+            self._unfold()
+        finally:
+            with contextlib.suppress(OSError):  # what it says has been said when writing
+                self._file.close()
 
     def _unfold(self) -> None:
-        for name, (count, stream_ps, fields) in self._folded.items():
+        folded, self._folded = self._folded, {}
+        for name, (count, stream_ps, fields) in folded.items():
             self._write(name, stream_ps, {**fields, "folded": count})
-        self._folded.clear()
 
     def _write(self, name: str, stream_ps: int | None, fields: dict[str, Any]) -> None:
+        if self._broken:
+            return
         line = {
             "utc": datetime.now(UTC).isoformat(timespec="milliseconds"),
             "level": "warning" if name in _WARNINGS else "info",
@@ -64,6 +78,7 @@ class EventLog:
             **fields,
         }
         try:
-            self._file.write(json.dumps(line) + "\n")
+            self._file.write(json.dumps(line, ensure_ascii=False) + "\n")
         except OSError as error:
+            self._broken = True
             raise cannot_write(self._path, error) from error

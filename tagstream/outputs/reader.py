@@ -118,7 +118,11 @@ class Run:
         return is_held(self.path)
 
     def profile(self, estimate: str) -> dict[str, NDArray[Any]]:
-        """What an estimate over the run was made from; empty if it keeps nothing."""
+        """What an estimate over the run was made from; empty if it keeps nothing.
+
+        Raises KeyError for an unknown estimate.
+        """
+        self.estimates[estimate]  # raises with the names that there are
         with self._latest() as entry:
             group = entry[at.ESTIMATES][estimate]
             if "profile" not in group:
@@ -132,15 +136,20 @@ class Run:
         (Unix seconds of writing), value, lower, upper (float64; nan where there is no number).
         Raises KeyError for an unknown estimate or span.
         """
-        spans = self.estimates[estimate]
-        if span not in spans:
-            spans[span]  # raises with the names that there are
+        self._check_names(estimate, span)
         wanted = {c: at.number_column(estimate, span, c) for c in at.HISTORY_COLUMNS}
         parts = [_history_part(file, wanted) for file in sorted(self.path.glob("history-*.h5"))]
         if not parts:
             raise ResultsError(f"{self.path}: no history-*.h5 in this run")
         joined = {key: np.concatenate([part[key] for part in parts]) for key in parts[0]}
         return {**joined, "time_s": joined["end_ps"] / PS_PER_S}
+
+    def _check_names(self, estimate: str, span: str) -> None:
+        """Before the first slice has ended, too, when no estimate has a value yet."""
+        with self._latest() as entry:
+            estimates = Named("estimate", dict.fromkeys(entry[at.ESTIMATES]))
+            spans = Named("span", dict.fromkeys(entry["spans"].asstr()[()]))
+        estimates[estimate], spans[span]
 
     def _latest(self) -> _Entry:
         return _Entry(self.path / "latest.h5")
@@ -155,14 +164,25 @@ class _Entry:
     def __enter__(self) -> h5py.Group:
         try:
             self._file = h5py.File(self._path, "r", locking=False)
-            return self._file[at.ENTRY]
-        except (OSError, KeyError) as error:
-            raise ResultsError(
-                f"{self._path}: not readable as results of a run: {error}"
-            ) from error
+        except OSError as error:
+            raise _not_results(self._path, error) from error
+        if at.ENTRY not in self._file:
+            self._file.close()
+            raise _not_results(self._path, KeyError(f"no group {at.ENTRY}"))
+        return self._file[at.ENTRY]
 
-    def __exit__(self, *_: object) -> None:
+    def __exit__(self, kind: object, error: BaseException | None, _: object) -> None:
         self._file.close()
+        if isinstance(error, KeyError | OSError | RuntimeError):
+            raise _not_results(self._path, error) from error
+
+
+def _not_results(path: Path, error: BaseException) -> ResultsError:
+    text = error.args[0] if error.args else error
+    return ResultsError(
+        f"{path}: not readable as results of a run: {text}; a file that tagstream wrote would be"
+        " right"
+    )
 
 
 def _estimates(group: h5py.Group) -> Named[Estimate]:
@@ -203,7 +223,11 @@ def _scalars(group: h5py.Group) -> dict[str, Any]:
 
 
 def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[Any]]:
-    with h5py.File(path, "r", swmr=True, locking=False) as file:
+    try:
+        file = h5py.File(path, "r", swmr=True, locking=False)
+    except OSError as error:
+        raise _not_results(path, error) from error
+    with file:
         integers, numbers = (file[at.ENTRY][n] for n in (at.HISTORY_INTEGERS, at.HISTORY_NUMBERS))
         rows = min(integers.shape[0], numbers.shape[0])
         columns = {name: i for i, name in enumerate(_names(integers))}

@@ -86,9 +86,7 @@ def test_a_live_feed_is_refused_by_run_but_replays(
     assert tagstream("replay", settings, recording).code == 0
 
 
-def test_run_says_where_results_are_and_how_fast_it_was(
-    settings: Path, tagstream: Caller
-) -> None:
+def test_run_says_where_results_are_and_how_fast_it_was(settings: Path, tagstream: Caller) -> None:
     done = tagstream("run", settings)
     assert done.out.startswith(f"results in {settings.parent}/runs/flow-0001\n")
     assert "million tags a second" in done.out

@@ -6,7 +6,7 @@ import numpy as np
 from hypothesis import given
 from hypothesis import strategies as st
 
-from tagstream.conditioning.kernels import fill_dead_time_cut, fill_ordered
+from tagstream.conditioning.kernels import fill_bucketed, fill_dead_time_cut, fill_ordered
 from tests import naive
 from tests.strategies import int64, tags
 
@@ -36,3 +36,16 @@ def test_dead_time_in_two_pieces(
         n = fill_dead_time_cut(times, channels, int64(dead_times), last, ever)
         found += list(zip(times[:n].tolist(), channels[:n].tolist(), strict=True))
     assert found == naive.without_dead_time(events, dead_times)
+
+
+@given(tags(most=200, span_ps=100_000), st.sampled_from([1, 2, 16, 256]))
+def test_dealing_out_to_intervals_is_stable_and_nearly_in_order(
+    events: list[tuple[int, int]], intervals: int
+) -> None:
+    numbered = [(t, i % 256) for i, (t, _) in enumerate(events)] or [(5, 0)]
+    times, marks = int64([t for t, _ in numbered]), np.array([m for _, m in numbered], np.uint8)
+    out_times, out_marks = np.empty_like(times), np.empty_like(marks)
+    fill_bucketed(times, marks, np.empty(intervals + 1, np.int64), out_times, out_marks)
+    fill_ordered(out_times, out_marks, 10**9)
+    found = list(zip(out_times.tolist(), out_marks.tolist(), strict=True))
+    assert found == naive.ordered(numbered)

@@ -3,19 +3,22 @@
 from __future__ import annotations
 
 from math import inf, isnan, sqrt
+from typing import Any
 
 import numpy as np
 import pytest
 
+from tagstream.errors import SettingsError
+from tagstream.estimates import Estimate
 from tests.estimates.made import S, estimator, sums, tally
 
 
-def rate(counts: int, live_time_ps: int = S, **more: object):  # type: ignore[no-untyped-def]
+def rate(counts: int, live_time_ps: int = S, **more: Any) -> Estimate:
     chosen = estimator(tally(), kind="count-rate", channel="a", **more)
     return chosen(sums([0], singles=(counts, 0, 0), live_time_ps=live_time_ps))
 
 
-def corrected(counts: int, dead_time: str, **more: object):  # type: ignore[no-untyped-def]
+def corrected(counts: int, dead_time: str, **more: Any) -> Estimate:
     return rate(counts, dead_time_model="non-paralyzable", dead_time=dead_time, **more)
 
 
@@ -69,6 +72,7 @@ def test_no_counts_are_an_upper_limit() -> None:
 
 def test_few_counts_are_noted() -> None:
     assert rate(9).note == "only 9 counts"
+    assert rate(1).note == "only 1 count"
     assert rate(10).note == ""
 
 
@@ -78,7 +82,12 @@ def test_what_cannot_be_said_has_a_reason() -> None:
     assert (found.interval, found.reason) == ("none", "no live time")
     found = corrected(2_000_000, "500 ns")
     assert found.interval == "none"
-    assert "more than this dead time allows" in found.reason
+    assert "more than this dead time allows (500 ns)" in found.reason
+
+
+def test_a_missing_dead_time_says_what_to_give() -> None:
+    with pytest.raises(SettingsError, match=r"dead_time: missing; give dead_time here or in"):
+        estimator(tally(), kind="count-rate", channel="a", dead_time_model="non-paralyzable")
 
 
 def test_a_bound_beyond_the_dead_time_is_infinite() -> None:

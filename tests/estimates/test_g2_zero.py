@@ -29,14 +29,23 @@ def test_one_bin_by_default() -> None:
 
 @pytest.mark.parametrize(
     ("window", "inside"),
-    # An even number of bins is [-w/2, w/2), as a coincidence window is.
+    # An even number m of bins is -m/2 to m/2 - 1, centred half a bin before zero.
     [("1 ns", 4), ("2 ns", 6), ("3 ns", 12), ("3.9 ns", 12), ("4 ns", 28)],
 )
 def test_windows(window: str, inside: int) -> None:
     made = counts(zero=4, minus_1=2, plus_1=6, minus_2=16, plus_2=32)
     found = estimator(tally(), kind="g2-zero", window=window)(sums(made, 1.0))
     assert found.counts == inside
-    assert found.value == pytest.approx(inside / int(float(window.split()[0])))
+    width = int(float(window.split()[0]))
+    assert found.value == pytest.approx(inside / width)
+    assert f"window {width} ns" in found.method
+    assert ("its centre 500 ps before it" in found.method) == (width % 2 == 0)
+
+
+def test_a_window_of_unlike_bins() -> None:
+    expected = np.linspace(1.0, 3.0, 201)  # the mean of any centred window is 2
+    found = estimator(tally(), kind="g2-zero", window="5 ns")(sums(counts(zero=20), expected))
+    assert found.value == pytest.approx(2.0)
 
 
 def test_two_detector_formula() -> None:

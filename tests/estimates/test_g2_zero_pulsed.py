@@ -30,6 +30,7 @@ def comb_counts(
 
 def pulsed(counts: NDArray[np.int64], expected: object = 1.0, **more: object) -> Estimate:
     table = {"period": "12.5 ns", "window": "3 ns", "side_peaks": 4} | more
+    table = {key: value for key, value in table.items() if value is not None}
     chosen = estimator(tally("500 ps", "125 ns"), kind="g2-zero-pulsed", **table)
     return chosen.with_profile(sums(counts, expected, periods=(5 * PERIOD, 5, 0)))  # type: ignore[arg-type]
 
@@ -88,18 +89,61 @@ def test_no_central_counts_are_an_upper_limit() -> None:
 
 
 @pytest.mark.parametrize(
-    ("change", "words"),
+    ("expected", "change", "words"),
     [
-        ({}, "no counts in the side peaks"),
-        ({"side_peaks": [30, 40], "period": "4 ns", "window": "1 ns"}, None),
-        ({"side_peaks": [11, 12]}, "no side peak in range: max_lag of at least 139 ns"),
+        (1.0, {}, "no counts in the side peaks"),
+        (1.0, {"side_peaks": [11, 12]}, "no side peak in range: max_lag of at least 139 ns"),
+        (0.0, {}, "no live time, or no slice with counts in both channels"),
+        (1.0, {"period": None, "clock": "clock", "window": "13 ns"}, "longer than the period"),
     ],
 )
-def test_what_cannot_be_said_has_a_reason(change: dict[str, object], words: str | None) -> None:
-    found = pulsed(np.zeros(501, np.int64), **change)
-    assert found.interval == "none"
-    assert words is None or words in found.reason
+def test_what_cannot_be_said_has_a_reason(
+    expected: float, change: dict[str, object], words: str
+) -> None:
+    found = pulsed(np.zeros(501, np.int64), expected, **change)
+    assert (found.interval, found.counts) == ("none", 0)
+    assert words in found.reason
     assert not found.profile
+
+
+def test_the_lag_that_is_asked_for_is_enough_and_no_more() -> None:
+    for width, period in ((5, Fraction(12_500)), (6, Fraction(12_300)), (7, Fraction(37_001, 3))):
+        need = Comb(500, 0, period).needed_lag_ps(4, width) // 500
+        fits = [
+            2 in {p // 2 for p in Comb(500, k, period).sides(width, 2, 2)} for k in (need - 1, need)
+        ]
+        assert fits == [False, True]
+
+
+def test_side_peaks_beyond_the_histogram_are_not_used() -> None:
+    # Of 20 peaks asked for on each side, nine windows of seven bins lie in 125 ns.
+    made = sums(
+        comb_counts(dict.fromkeys(range(-9, 10), 100)),
+        periods=(50_000, 4, 0),
+    )
+    chosen = estimator(
+        tally("500 ps", "125 ns"),
+        kind="g2-zero-pulsed",
+        clock="clock",
+        window="3.5 ns",
+        side_peaks=[3, 20],
+    )
+    found = chosen(made)
+    assert found.value == pytest.approx(1.0)
+    assert "side peaks 3 to 9 on each side" in found.method
+
+
+def test_lags_that_no_pair_can_have_are_left_out() -> None:
+    # Live stretches of 60 ns: no pair beyond, and none expected there.
+    lags = np.abs(np.arange(-250, 251)) * 500
+    expected = np.where(lags < 60_000, 1.0, 0.0)
+    areas = {n: 500 for n in range(-4, 5) if n}
+    found = pulsed(comb_counts({0: 50, **areas}), expected, side_peaks=8)
+    assert found.value == pytest.approx(0.1)
+    assert found.note == ""
+    known = np.isfinite(found.profile["peak_area"])
+    assert list(found.profile["peak_number"][known]) == list(range(-4, 5))
+    assert found.profile["flatness_ndf"] == 7
 
 
 def test_the_period_from_a_clock() -> None:
@@ -128,6 +172,11 @@ def test_near_peaks_that_are_high_are_told() -> None:
     found = pulsed(comb_counts(areas))
     assert found.note.startswith("side peaks not flat: near/far 1.3 (p ")
     assert found.profile["flatness_chi2"] > 3 * found.profile["flatness_ndf"]
+
+
+def test_far_peaks_that_are_missing_are_told() -> None:
+    found = pulsed(comb_counts({0: 50, **dict.fromkeys((-2, -1, 1, 2), 500)}))
+    assert found.note.startswith("side peaks not flat: near/far infinite (p ")
 
 
 def test_flat_peaks_are_seldom_told_not_to_be() -> None:
@@ -215,8 +264,8 @@ def test_windows_lie_nearest_to_their_centres(
 def test_areas_with_and_without_edges() -> None:
     counts = np.arange(21, dtype=np.int64)
     comb = Comb(100, 10, Fraction(500))
-    flat = PulsedHistogram(counts, np.array(2.0), comb).areas([0, 2], 3)
-    edged = PulsedHistogram(counts, np.full(21, 2.0), comb).areas([0, 2], 3)
+    flat = PulsedHistogram(counts, np.array(2.0), comb, 3, [2]).areas([0, 2], 3)
+    edged = PulsedHistogram(counts, np.full(21, 2.0), comb, 3, [2]).areas([0, 2], 3)
     assert list(flat[0]) == list(edged[0]) == [9 + 10 + 11, 14 + 15 + 16]
     assert list(flat[1]) == list(edged[1]) == [6, 6]
 

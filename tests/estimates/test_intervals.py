@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 from scipy import stats
 
 from tagstream.estimates.intervals import (
+    Kind,
     binomial_interval,
     garwood,
     poisson_interval,
@@ -75,7 +76,8 @@ def test_gehrels_upper_limit_of_nothing_is_the_histograms() -> None:
 def test_no_counts_give_a_one_sided_limit(level: float) -> None:
     # -ln(1 - level); 2.9957 at 95 %, the "rule of three".
     found = poisson_interval(0, level)
-    assert found == (0.0, pytest.approx(-log(1 - level)), True)
+    assert (found.lower, found.upper_limit) == (0.0, True)
+    assert found.upper == pytest.approx(-log(1 - level))
     assert exp(-found.upper) == pytest.approx(1 - level)
 
 
@@ -160,6 +162,61 @@ def test_a_ratio_turned_over_has_the_bounds_turned_over(
     assert isclose(found.upper, 1 / other.lower, rel_tol=1e-8)
 
 
+def test_a_limit_for_many_trials_keeps_its_digits() -> None:
+    # (1 - p)^n = 1 - level: p n -> -ln(1 - level) = 2.9957 at 95 %, the "rule of three".
+    found = binomial_interval(0, 10**12, 0.95)
+    assert found.upper * 10**12 == pytest.approx(-log(0.05), rel=1e-11)
+
+
+@pytest.mark.parametrize("level", [0.6827, 0.95])
+def test_at_its_ends_mid_p_is_the_exact_one_sided_bound(level: float) -> None:
+    # P(X = 0) / 2 = (1 - level) / 2 is exp(-mean) = 1 - level; likewise p^n for hits only.
+    assert poisson_interval(0, level) == poisson_interval(0, level, "exact")
+    assert binomial_interval(7, 7, level).lower == pytest.approx((1 - level) ** (1 / 7))
+    # Clopper-Pearson is two-sided there.
+    exact = binomial_interval(7, 7, level, "exact")
+    assert exact.lower == pytest.approx(stats.beta.ppf((1 - level) / 2, 7, 1))
+    assert exact.upper == 1
+
+
+def test_without_trials_nothing_is_known() -> None:
+    assert binomial_interval(0, 0, 0.95) == (0.0, 1.0, True)
+
+
+@given(st.integers(1, 2_000), st.integers(1, 2_000), LEVELS)
+def test_exact_binomial_equals_beta_quantiles(hits: int, misses: int, level: float) -> None:
+    tail = (1 - level) / 2
+    found = binomial_interval(hits, hits + misses, level, "exact")
+    assert found.lower == pytest.approx(stats.beta.ppf(tail, hits, misses + 1), rel=1e-10)
+    assert found.upper == pytest.approx(stats.beta.ppf(1 - tail, hits + 1, misses), rel=1e-10)
+
+
+@pytest.mark.parametrize("reference", [10**6, 10**9, 10**12])
+def test_huge_references_leave_the_interval_of_the_count(reference: int) -> None:
+    # With the reference known well, the ratio has the interval of a Poisson mean.
+    found = ratio_interval(10, reference, float(reference), 0.6827)
+    mean = poisson_interval(10, 0.6827)
+    assert found.lower == pytest.approx(mean.lower, rel=3e-5)
+    assert found.upper == pytest.approx(mean.upper, rel=3e-5)
+    assert ratio_interval(reference, 1, 1.0, 0.6827).lower == pytest.approx(
+        1 / ratio_interval(1, reference, 1.0, 0.6827).upper, rel=1e-12
+    )
+
+
+@given(st.integers(0, 300), st.integers(0, 300), st.floats(0.1, 10))
+def test_p_value_is_twice_the_smaller_binomial_tail(
+    count: int, reference: int, exposure: float
+) -> None:
+    law = stats.binom(count + reference, 1 / (1 + exposure))
+    two_sided = min(1.0, 2 * min(law.cdf(count), law.sf(count - 1)))
+    assert ratio_p_value(count, reference, exposure) == pytest.approx(two_sided, rel=1e-7)
+
+
+def test_p_values_far_out_do_not_vanish() -> None:
+    assert ratio_p_value(200, 0, 1.0) == pytest.approx(2 * 0.5**200)
+    assert ratio_p_value(0, 200, 1.0) == pytest.approx(2 * 0.5**200)
+
+
 def test_ratio_at_its_ends() -> None:
     assert ratio_interval(0, 0, 2.0, 0.95) == (0.0, inf, True)
     assert ratio_interval(5, 0, 2.0, 0.95).upper == inf
@@ -173,14 +230,10 @@ def test_a_million_million_counts_follow_the_normal_law() -> None:
     assert n - found.lower == pytest.approx(n**0.5, rel=1e-5)
 
 
-def coverage(mean: float, level: float, kind: str) -> float:
+def coverage(mean: float, level: float, kind: Kind) -> float:
     """Exact probability that the interval holds the mean, by summing the Poisson law."""
     counts = range(int(mean + 12 * mean**0.5 + 20))
-    held = [
-        n
-        for n in counts
-        if (b := poisson_interval(n, level, kind)).lower <= mean <= b.upper  # type: ignore[arg-type]
-    ]
+    held = [n for n in counts if (b := poisson_interval(n, level, kind)).lower <= mean <= b.upper]
     return float(stats.poisson.pmf(held, mean).sum())
 
 

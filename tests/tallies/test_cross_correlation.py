@@ -22,9 +22,7 @@ CHANNELS = {"a": 0, "b": 1, "c": 2}
 
 def section(name: str, start: str, stop: str, bin_ps: int, max_lag_ps: int) -> Settings:
     table = {"name": name, "kind": "cross-correlation", "start": start, "stop": stop}
-    return Settings.model_validate(
-        table | {"max_lag": f"{max_lag_ps} ps", "bin": f"{bin_ps} ps"}
-    )
+    return Settings.model_validate(table | {"max_lag": f"{max_lag_ps} ps", "bin": f"{bin_ps} ps"})
 
 
 class One:
