@@ -9,6 +9,7 @@ from pathlib import Path
 from tagstream.errors import SettingsError
 from tagstream.feeds import Feed, build_feed
 from tagstream.feeds.paced import PacedFeed
+from tagstream.hdf5_thread import Hdf5Thread, ReadAhead, SinkInThread
 from tagstream.outputs import RunHeader
 from tagstream.outputs.folder import RunFolder
 from tagstream.outputs.run_writer import RunWriter
@@ -48,14 +49,19 @@ def feed_of_recordings(paths: tuple[Path, ...], settings: Settings) -> Feed:
     return RecordingsFeed(list(paths), settings.rolling.slice_ps)
 
 
-def start(plan: Plan, wait: Callable[[float], bool]) -> tuple[Pipeline, RunFolder]:
+def start(
+    plan: Plan, wait: Callable[[float], bool], thread: Hdf5Thread
+) -> tuple[Pipeline, RunFolder]:
     """Open the feed, make the run folder, and join the stages.
 
-    wait: sleeps for so many seconds, True when a stop was asked for. Raises InputError when the
+    wait: sleeps for so many seconds, True when a stop was asked for. thread: reads and writes
+    files. Raises InputError when the
     feed has nothing good, before a folder is made; ResultsError when none can be made.
     """
     settings = plan.loaded.settings
-    feed = plan.feed if plan.pace is None else PacedFeed(plan.feed, plan.pace, wait)
+    feed: Feed = ReadAhead(plan.feed, thread)
+    if plan.pace is not None:
+        feed = PacedFeed(feed, plan.pace, wait)
     folders: list[RunFolder] = []
 
     def open_sink(header: RunHeader) -> RunWriter:
@@ -63,7 +69,10 @@ def start(plan: Plan, wait: Callable[[float], bool]) -> tuple[Pipeline, RunFolde
         folders.append(folder)
         return RunWriter(folder, header)
 
-    pipeline = Pipeline(settings, plan.loaded.to_toml(), feed, open_sink)
+    def open_in_thread(header: RunHeader) -> SinkInThread:
+        return SinkInThread(open_sink, header, thread)
+
+    pipeline = Pipeline(settings, plan.loaded.to_toml(), feed, open_in_thread)
     for text in plan.loaded.warnings:
         pipeline.sink.event("warning", text=text)
     return pipeline, folders[0]

@@ -23,7 +23,7 @@ from tagstream.feeds import Feed
 from tagstream.outputs import Row, RunHeader, Sink, Snapshot, SpanView
 from tagstream.settings import Settings, rules
 from tagstream.settings.measures import CountRate, EstimateSettings, G2ZeroPulsed, TallySettings
-from tagstream.tallies import SINGLES, Sums, Tally, build_tallies
+from tagstream.tallies import SINGLES, Sums, build_tallies
 from tagstream.tallies.singles import Singles
 from tagstream.tallies.slicer import cut_at_slices
 from tagstream.tallies.spans import Spans, SpanSums
@@ -70,10 +70,8 @@ class Pipeline:
             if isinstance(e, G2ZeroPulsed) and e.clock is not None
         }
         self._conditioner = Conditioner(settings, self.counters)
-        self._tallies: list[Tally] = [
-            Singles(len(index), sorted(clocks)),
-            *build_tallies(settings.tallies, index),
-        ]
+        self._singles = Singles(len(index), sorted(clocks))
+        self._tallies = build_tallies(settings.tallies, index)
         self._axes = {name: axes for t in self._tallies for name, axes in t.axes.items()}
         self._estimators = {
             estimate.name: build_estimator(_resolved(estimate, settings), index, tally_settings)
@@ -117,6 +115,7 @@ class Pipeline:
                 if self._slice is not None and index != self._slice:
                     self._end_slice(self._slice)
                 self._slice = index
+                self._singles.add(piece)
                 for tally in self._tallies:
                     tally.add(piece)
                 if piece.end_ps == (index + 1) * slice_ps:
@@ -124,9 +123,12 @@ class Pipeline:
 
     def _end_slice(self, index: int) -> None:
         self._slice = None
-        sums = {name: found for tally in self._tallies for name, found in tally.take().items()}
+        singles = self._singles.take()
+        sums: dict[str, Sums] = {SINGLES: singles}
+        for tally in self._tallies:
+            sums |= tally.take(singles)
         self._spans.add(index, sums)
-        singles, slice_ps = sums[SINGLES], self.settings.rolling.slice_ps
+        slice_ps = self.settings.rolling.slice_ps
         self.sink.add_row(
             Row(
                 index,

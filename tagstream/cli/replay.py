@@ -41,6 +41,6 @@ def command(
     from tagstream.cli import session
     from tagstream.settings import load_settings
 
-    loaded = load_settings(settings, overrides)
+    loaded = load_settings(settings, overrides).for_replay()
     feed = launch.feed_of_recordings(recordings, loaded.settings)
     session.conduct(launch.Plan(loaded, feed, name, pace), as_json)

@@ -11,6 +11,7 @@ from typing import Any
 import click
 
 from tagstream.errors import TagstreamError
+from tagstream.hdf5_thread import Hdf5Thread
 from tagstream.launch import Plan, start
 from tagstream.pipeline import Pipeline
 from tagstream.service import StopRequest, run_to_end
@@ -28,7 +29,8 @@ def conduct(plan: Plan, as_json: bool) -> None:
     for text in plan.loaded.warnings:
         click.echo(f"warning: {text}", err=True)
     started = time.monotonic()
-    pipeline, folder = start(plan, stop.wait)
+    thread = Hdf5Thread()
+    pipeline, folder = start(plan, stop.wait, thread)
     if not as_json:
         click.echo(f"results in {folder.path}")
     try:

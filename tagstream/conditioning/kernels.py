@@ -49,8 +49,8 @@ def fill_plain(
     latest = state[0] - offset
     largest, kept, unlisted, unordered = state[6], counts[0], counts[5], counts[6]
     last = out_times[np.uint64(kept - 1)] if kept > 0 else -limit - limit // 256
-    i = np.int64(first)
-    size = np.int64(times_ps.size)
+    i = first
+    size = times_ps.size
     while i < size:
         t = times_ps[np.uint64(i)]
         ahead = t - latest
@@ -109,8 +109,8 @@ def fill_judged(
     Cost: one pass.
     """
     disorder, jump, limit, begin, end = rules[0], rules[1], rules[2], rules[3], rules[4]
-    i = np.int64(0)
-    size = np.int64(times_ps.size)
+    i = 0
+    size = times_ps.size
     while i < size:
         if state[1] == 1 and state[3] == 0:
             i = fill_plain(

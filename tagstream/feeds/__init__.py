@@ -7,7 +7,7 @@ channels' meaning or of who consumes.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Generator
 from dataclasses import dataclass
 from fractions import Fraction
 from importlib import import_module
@@ -65,7 +65,7 @@ class Feed(Protocol):
     far, or None when its length is unknown.
     """
 
-    def pieces(self) -> Iterator[Arrivals]: ...
+    def pieces(self) -> Generator[Arrivals]: ...
 
     @property
     def time_base(self) -> TimeBase: ...

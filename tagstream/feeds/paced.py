@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Generator, Iterator
 from dataclasses import replace
 from typing import Any
 
@@ -43,7 +43,7 @@ class PacedFeed:
     def progress(self) -> float | None:
         return self._feed.progress
 
-    def pieces(self) -> Iterator[Arrivals]:
+    def pieces(self) -> Generator[Arrivals]:
         step_ps = int(STEP_S * self._pace * PS_PER_S)
         first_ps: int | None = None
         started = self._clock()

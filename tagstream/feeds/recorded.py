@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Generator, Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from pathlib import Path
@@ -42,7 +42,7 @@ class RecordingsFeed:
         self._delivered = 0
         self._shift: units.TickScale | None = None
 
-    def pieces(self) -> Iterator[Arrivals]:
+    def pieces(self) -> Generator[Arrivals]:
         """As `Feed.pieces`."""
         gap, self._delivered = False, 0
         for number, segment in enumerate(self._segments):

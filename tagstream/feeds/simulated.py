@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Generator
 from typing import Any
 
 from tagstream.feeds import Arrivals, TimeBase
@@ -24,7 +24,7 @@ class SimulationFeed:
         self._duration_ps = settings.duration_ps or self._scenario.duration_ps
         self._done_ps = 0
 
-    def pieces(self) -> Iterator[Arrivals]:
+    def pieces(self) -> Generator[Arrivals]:
         """Contiguous pieces in time order, from 0 to the duration exactly."""
         for piece in simulate_pieces(self._scenario, self._seed, self._duration_ps):
             self._done_ps = piece.end_ps

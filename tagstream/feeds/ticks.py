@@ -6,7 +6,7 @@ settings vouch for, if they do, is put around them.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Generator, Iterator
 from dataclasses import dataclass
 from fractions import Fraction
 from pathlib import Path
@@ -78,7 +78,7 @@ class TickFeed:
         self._scale = units.TickScale(self._settings.tick_ps, first_ticks, self._slice_ps)
         return self._scale
 
-    def pieces(self) -> Iterator[Arrivals]:
+    def pieces(self) -> Generator[Arrivals]:
         """As `Feed.pieces`."""
         for piece in self._source.pieces():
             scale = self._scale

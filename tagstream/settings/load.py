@@ -52,6 +52,11 @@ class LoadedSettings:
     warnings: list[str]
     file: Path
 
+    def for_replay(self) -> LoadedSettings:
+        """The same, where recordings stand in for the feed: what concerns it warns nobody."""
+        rest = [text for text in self.warnings if not text.startswith("[feed]")]
+        return LoadedSettings(self.settings, rest, self.file)
+
     def to_toml(self) -> str:
         """The effective settings: every default written out, paths absolute."""
         table = self.settings.model_dump(by_alias=True, exclude_none=True)

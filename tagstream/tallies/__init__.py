@@ -31,7 +31,8 @@ class Tally(Protocol):
 
     `add` takes pieces of one slice in stream order. `take` returns the sums of the slice that
     ended, by name of section, owned by the caller, and starts the next slice at zero; look-back
-    survives. `axes`, by name, are the arrays that do not add up (bin centres and edges).
+    survives. It is given the singles of that slice, so that no tally counts them again. `axes`,
+    by name, are the arrays that do not add up (bin centres and edges).
     """
 
     @property
@@ -39,7 +40,7 @@ class Tally(Protocol):
 
     def add(self, piece: Block) -> None: ...
 
-    def take(self) -> dict[str, dict[str, NDArray[Any]]]: ...
+    def take(self, singles: Sums) -> dict[str, dict[str, NDArray[Any]]]: ...
 
 
 # kind -> "module:function" that builds the tallies of all sections of that kind

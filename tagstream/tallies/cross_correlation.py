@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from tagstream.block import Block
 from tagstream.settings.measures import CrossCorrelation
+from tagstream.tallies import Sums
 from tagstream.tallies.bins import lag_axis, lag_edges
-from tagstream.tallies.kernels import fill_counts
 from tagstream.tallies.pair_time import PairTime
 from tagstream.tallies.pairs import PairHistograms
 
@@ -63,40 +63,36 @@ class CrossCorrelations:
         }
         self.axes = dict.fromkeys(self._pairs, axes)
         self._pair_time = PairTime(lag_axis(bins, self._bin_ps))
-        self._singles = np.zeros(len(channels), np.int64)
-        self._live_time_ps = 0
 
     def add(self, piece: Block) -> None:
         self._pair_time.add(piece)
-        self._live_time_ps += piece.end_ps - piece.begin_ps
-        first = int(np.searchsorted(piece.times_ps, np.int64(piece.begin_ps)))
-        fill_counts(piece.channels[first:], self._singles)
         self._histograms.add(piece)
 
-    def take(self) -> dict[str, dict[str, NDArray[Any]]]:
+    def take(self, singles: Sums) -> dict[str, dict[str, NDArray[Any]]]:
         pair_time = self._pair_time.take()
         histograms = self._histograms.counts
         sums = {
-            name: self._sums(counts.copy(), pair, pair_time)
+            name: self._sums(counts.copy(), pair, pair_time, singles)
             for (name, pair), counts in zip(self._pairs.items(), histograms, strict=True)
         }
         histograms[:] = 0
-        self._singles[:] = 0
-        self._live_time_ps = 0
         return sums
 
     def _sums(
-        self, counts: NDArray[np.int64], pair: tuple[int, int], pair_time: NDArray[np.int64]
+        self,
+        counts: NDArray[np.int64],
+        pair: tuple[int, int],
+        pair_time: NDArray[np.int64],
+        singles: Sums,
     ) -> dict[str, NDArray[Any]]:
-        starts, stops = (int(self._singles[channel]) for channel in pair)
+        starts, stops = (int(singles["counts"][channel]) for channel in pair)
+        live_time_ps = int(singles["live_time_ps"])
         others = max(stops - (pair[0] == pair[1]), 0)
         return {
             "counts": counts,
             "start_counts": np.array(starts, np.int64),
             "stop_counts": np.array(stops, np.int64),
-            "live_time_ps": np.array(self._live_time_ps, np.int64),
+            "live_time_ps": np.array(live_time_ps, np.int64),
             "pair_time_ps": pair_time,
-            "expected_pairs": expected_pairs(
-                starts, others, self._live_time_ps, pair_time, self._bin_ps
-            ),
+            "expected_pairs": expected_pairs(starts, others, live_time_ps, pair_time, self._bin_ps),
         }

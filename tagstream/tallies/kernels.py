@@ -53,7 +53,7 @@ def fill_wanted(
     for i in range(times_ps.size):
         out_times[np.uint64(count)] = times_ps[i]
         out_channels[np.uint64(count)] = channels[i]
-        count += np.int64(wanted[channels[i]])
+        count += int(wanted[channels[i]])
     return count
 
 
@@ -116,8 +116,8 @@ def fill_pairs(
     Cost: one pass over both plus one step per pair (two pointers).
     """
     reach = counts.size * (division[0] // 2)  # twice the distance from zero to the outer edges
-    most = np.int64(stops_ps.size)
-    low = np.int64(0)
+    most = stops_ps.size
+    low = 0
     for i in range(starts_ps.size):
         shift = reach - 2 * starts_ps[i]
         while low < most and 2 * stops_ps[np.uint64(low)] + shift < 0:
@@ -160,13 +160,13 @@ def fill_close_pairs(
     one pass, plus a step per pair of any two channels: for light with few neighbours in reach.
     """
     half = reach // 2
-    size = np.int64(times_ps.size)
+    size = times_ps.size
     for begin in range(first, size, CHUNK):
         end = min(begin + CHUNK, size)
-        found = np.int64(0)
-        j = np.int64(begin)
+        found = 0
+        j = begin
         while j + GROUP <= end:
-            close = np.int64(0)
+            close = 0
             for g in range(GROUP):
                 close |= np.int64(
                     times_ps[np.uint64(j + g)] - times_ps[np.uint64(j + g - 1)] <= half
@@ -180,20 +180,22 @@ def fill_close_pairs(
             candidates[np.uint64(found)] = j
             found += times_ps[np.uint64(j)] - times_ps[np.uint64(j - 1)] <= half
             j += 1
-        distance = np.int64(1)
+        distance = 1
         while found > 0:
-            left = np.int64(0)
+            left = 0
             for q in range(found):
-                j = candidates[np.uint64(q)]
-                twice = 2 * (times_ps[np.uint64(j)] - times_ps[np.uint64(j - distance)])
+                later = candidates[np.uint64(q)]
+                twice = 2 * (times_ps[np.uint64(later)] - times_ps[np.uint64(later - distance)])
                 pair = np.uint64(
-                    np.int64(channels[np.uint64(j - distance)]) * number
-                    + np.int64(channels[np.uint64(j)])
+                    np.int64(channels[np.uint64(later - distance)]) * number
+                    + np.int64(channels[np.uint64(later)])
                 )
                 for order in range(targets.shape[1]):
                     k = bin_of(reach + targets[0, order, pair] * twice, division)
                     counts[np.uint64(targets[1, order, pair]) + k] += 1
-                candidates[np.uint64(left)] = j
-                left += times_ps[np.uint64(j)] - times_ps[np.uint64(j - distance - 1)] <= half
+                candidates[np.uint64(left)] = later
+                left += (
+                    times_ps[np.uint64(later)] - times_ps[np.uint64(later - distance - 1)] <= half
+                )
             found = left
             distance += 1

@@ -50,7 +50,8 @@ class PairHistograms:
         self._candidates = np.empty(CHUNK + 1, np.int64)
         self._wanted = np.zeros(number, np.uint8)
         self._wanted[[channel for pair in self._pairs for channel in pair]] = 1
-        self._forget()
+        self._old_times: NDArray[np.int64] = np.empty(0, np.int64)
+        self._old_channels: NDArray[np.uint8] = np.empty(0, np.uint8)
 
     def add(self, piece: Block) -> None:
         """Count the pairs whose later tag is in `piece`."""

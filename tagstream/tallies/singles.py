@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import Any, ClassVar
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.block import Block
-from tagstream.tallies import SINGLES
 from tagstream.tallies.kernels import fill_counts, fill_periods, fill_selected
 
 
@@ -20,8 +19,6 @@ class Singles:
     period_sum_ps, period_count, missed_count (see kernels.fill_periods). A period belongs to the
     slice of its later tag.
     """
-
-    axes: ClassVar[dict[str, dict[str, NDArray[Any]]]] = {SINGLES: {}}
 
     def __init__(self, channels: int, clocks: Sequence[int]) -> None:
         self._counts = np.zeros(channels, np.int64)
@@ -40,7 +37,8 @@ class Singles:
             count = fill_selected(piece.times_ps, piece.channels, clock, times)
             fill_periods(times[:count], last, self._periods[clock])
 
-    def take(self) -> dict[str, dict[str, NDArray[Any]]]:
+    def take(self) -> dict[str, NDArray[Any]]:
+        """The sums of the slice that ended; the next begins at zero."""
         sums = {
             "counts": self._counts.copy(),
             "live_time_ps": np.array(self._live_time_ps, np.int64),
@@ -51,4 +49,4 @@ class Singles:
         self._counts[:] = 0
         self._periods[:] = 0
         self._live_time_ps = 0
-        return {SINGLES: sums}
+        return sums
