@@ -2,26 +2,30 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 
+from tagstream.conditioning import conditioned
 from tagstream.errors import SettingsError
 from tagstream.feeds import Feed, build_feed
-from tagstream.feeds.paced import PacedFeed
-from tagstream.hdf5_thread import Hdf5Thread, ReadAhead, SinkInThread
+from tagstream.feeds.paced import paced
 from tagstream.outputs import RunHeader
 from tagstream.outputs.folder import RunFolder
 from tagstream.outputs.run_writer import RunWriter
 from tagstream.pipeline import Pipeline
+from tagstream.service import StopRequest
 from tagstream.settings import Settings
 from tagstream.settings.feeds import LIVE_KINDS
 from tagstream.settings.load import LoadedSettings
+from tagstream.threads import OneThread, SinkInThread, ahead
 
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """What is to be run. name: of the run, absent that of the settings; pace: see PacedFeed."""
+    """What is to be run. name: of the run, absent that of the settings; pace: stream seconds
+    per second of wall time, absent as fast as it can."""
 
     loaded: LoadedSettings
     feed: Feed
@@ -49,30 +53,36 @@ def feed_of_recordings(paths: tuple[Path, ...], settings: Settings) -> Feed:
     return RecordingsFeed(list(paths), settings.rolling.slice_ps)
 
 
-def start(
-    plan: Plan, wait: Callable[[float], bool], thread: Hdf5Thread
-) -> tuple[Pipeline, RunFolder]:
-    """Open the feed, make the run folder, and join the stages.
+@contextmanager
+def started(plan: Plan, stop: StopRequest) -> Iterator[tuple[Pipeline, RunFolder]]:
+    """The feed open, the run folder made and the stages joined, each in its thread.
 
-    wait: sleeps for so many seconds, True when a stop was asked for. thread: reads and writes
-    files. Raises InputError when the
-    feed has nothing good, before a folder is made; ResultsError when none can be made.
+    Raises InputError when the feed has nothing good, before a folder is made; ResultsError when
+    none can be made.
     """
     settings = plan.loaded.settings
-    feed: Feed = ReadAhead(plan.feed, thread)
-    if plan.pace is not None:
-        feed = PacedFeed(feed, plan.pace, wait)
+    files, conditioning = OneThread("files"), OneThread("conditioning")
     folders: list[RunFolder] = []
 
-    def open_sink(header: RunHeader) -> RunWriter:
+    def open_writer(header: RunHeader) -> RunWriter:
         folder = RunFolder.create(settings.results.folder, plan.name or settings.results.name)
         folders.append(folder)
         return RunWriter(folder, header)
 
-    def open_in_thread(header: RunHeader) -> SinkInThread:
-        return SinkInThread(open_sink, header, thread)
+    def open_sink(header: RunHeader) -> SinkInThread:
+        return SinkInThread(open_writer, header, files)
 
-    pipeline = Pipeline(settings, plan.loaded.to_toml(), feed, open_in_thread)
-    for text in plan.loaded.warnings:
-        pipeline.sink.event("warning", text=text)
-    return pipeline, folders[0]
+    pieces = ahead(plan.feed.pieces(), files)
+    if plan.pace is not None:
+        pieces = paced(pieces, plan.pace, stop.wait)
+    stream = ahead(conditioned(pieces, settings, lambda: stop.requested), conditioning)
+    try:
+        pipeline = Pipeline(settings, plan.loaded.to_toml(), plan.feed, stream, open_sink)
+        for text in plan.loaded.warnings:
+            pipeline.sink.event("warning", text=text)
+        yield pipeline, folders[0]
+    finally:
+        stream.close()
+        conditioning.submit(pieces.close)
+        conditioning.close()
+        files.close()

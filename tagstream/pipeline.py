@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.block import Block
-from tagstream.conditioning import Conditioner
+from tagstream.conditioning import Conditioned
 from tagstream.counters import Counters
 from tagstream.errors import InputError
 from tagstream.estimates import Estimate, build_estimator
@@ -44,8 +44,8 @@ class State(StrEnum):
 class Pipeline:
     """Settings, a feed and a sink, joined. Call `step` until it says no, then `finish`.
 
-    open_sink: makes the sink once the feed has shown what it is, so that a feed that cannot be
-    read leaves no empty run behind.
+    feed: what is known of it. stream: its tags, conditioned. open_sink: makes the sink once the
+    feed has shown what it is, so that a feed that cannot be read leaves no empty run behind.
     """
 
     def __init__(
@@ -53,15 +53,14 @@ class Pipeline:
         settings: Settings,
         settings_text: str,
         feed: Feed,
+        stream: Iterator[Conditioned],
         open_sink: Callable[[RunHeader], Sink],
     ) -> None:
         self.settings = settings
         self.feed = feed
-        self.counters = Counters()
-        self._pieces = feed.pieces()
-        self._next = next(self._pieces, None)
-        if self._next is None:
-            raise InputError("the feed holds no tags; a feed with at least one tag would be right")
+        self._stream = stream
+        self._now = self._first()
+        self._first_taken = False
         index = settings.channel_index
         tally_settings = {tally.name: tally for tally in settings.tallies}
         clocks = {
@@ -69,7 +68,6 @@ class Pipeline:
             for e in settings.estimates
             if isinstance(e, G2ZeroPulsed) and e.clock is not None
         }
-        self._conditioner = Conditioner(settings, self.counters)
         self._singles = Singles(len(index), sorted(clocks))
         self._tallies = build_tallies(settings.tallies, index)
         self._axes = {name: axes for t in self._tallies for name, axes in t.axes.items()}
@@ -79,34 +77,43 @@ class Pipeline:
         }
         self._spans = Spans(settings.rolling)
         self._slice: int | None = None
-        self._latest_arrival_ps = 0
         self.sink = open_sink(self._header(settings_text))
         self._warn_of_bins()
+
+    @property
+    def counters(self) -> Counters:
+        """What became of the tags so far."""
+        return self._now.counters
 
     def step(self) -> bool:
         """Take one piece of the feed all the way; False when there was none left.
 
         Raises InputError when the feed breaks; what came before it has been taken.
         """
-        piece = self._next
-        if piece is None:
-            return False
-        self._next = None  # should the feed break now, this piece is not taken twice
-        self._take(self._conditioner.push(piece))
-        if piece.times_ps.size:
-            self._latest_arrival_ps = int(piece.times_ps.max())
-        self._next = next(self._pieces, None)
+        if self._first_taken:
+            following = next(self._stream, None)
+            if following is None:
+                return False
+            self._now = following
+        self._first_taken = True
+        self._take(self._now.blocks)
         return True
 
     def finish(self, state: State, **fields: Any) -> None:
-        """Take what still waits for order, end the last slice and close the sink."""
-        self._take(self._conditioner.finish())
+        """End the last slice and close the sink."""
         if self._slice is not None:
             self._end_slice(self._slice)
         self.sink.event("end", None, **{**self._health(state), **fields})
         self.sink.close(self._snapshot(state))
 
-    def _take(self, blocks: Iterator[Block]) -> None:
+    def _first(self) -> Conditioned:
+        """The first piece with anything in it. Raises InputError when there is none."""
+        for first in self._stream:
+            if first.blocks or first.counters.arrived:
+                return first
+        raise InputError("the feed holds no tags; a feed with at least one tag would be right")
+
+    def _take(self, blocks: list[Block]) -> None:
         slice_ps = self.settings.rolling.slice_ps
         for block in blocks:
             if block.opens and self.counters.gaps:
@@ -181,7 +188,8 @@ class Pipeline:
 
     def _health(self, state: State) -> dict[str, int | float | str]:
         counters = self.counters
-        behind = self._latest_arrival_ps - (self._conditioner.live_end_ps or 0)
+        now = self._now
+        behind = (now.latest_ps or 0) - (now.live_end_ps or 0)
         return {
             "state": str(state),
             "received": counters.received,
@@ -193,7 +201,7 @@ class Pipeline:
             "largest_disorder_ps": counters.largest_disorder_ps,
             "backlog_blocks": 0,
             "lag_behind_s": max(behind, 0) / PS_PER_S,
-            "last_tag_ps": self._conditioner.last_tag_ps or 0,
+            "last_tag_ps": now.last_tag_ps or 0,
         }
 
     def _header(self, settings_text: str) -> RunHeader:

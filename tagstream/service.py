@@ -48,13 +48,13 @@ class StopRequest:
 def run_to_end(
     pipeline: Pipeline, stop: StopRequest, after_step: Callable[[], None] = lambda: None
 ) -> State:
-    """Step until the feed ends or a stop is asked for; close everything, whatever happens.
+    """Step until the feed ends, by itself or after a stop; close everything, whatever happens.
 
     Raises what the pipeline raised, after the results so far were closed with a state that says
     so.
     """
     try:
-        while not stop.requested and pipeline.step():
+        while pipeline.step():
             after_step()
     except InputError as error:
         pipeline.finish(State.INPUT_BROKEN, error=str(error))

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from tagstream.conditioning import conditioned
 from tagstream.feeds import Feed
 from tagstream.outputs import Row, RunHeader, Snapshot
 from tagstream.pipeline import Pipeline, State
@@ -43,7 +44,7 @@ def run_in_memory(settings: Settings, feed: Feed) -> MemorySink:
         sinks.append(MemorySink(header))
         return sinks[0]
 
-    pipeline = Pipeline(settings, "", feed, open_sink)
+    pipeline = Pipeline(settings, "", feed, conditioned(feed.pieces(), settings), open_sink)
     while pipeline.step():
         pass
     pipeline.finish(State.FINISHED)

@@ -11,8 +11,7 @@ from typing import Any
 import click
 
 from tagstream.errors import TagstreamError
-from tagstream.hdf5_thread import Hdf5Thread
-from tagstream.launch import Plan, start
+from tagstream.launch import Plan, started
 from tagstream.pipeline import Pipeline
 from tagstream.service import StopRequest, run_to_end
 
@@ -28,19 +27,18 @@ def conduct(plan: Plan, as_json: bool) -> None:
     stop.install()
     for text in plan.loaded.warnings:
         click.echo(f"warning: {text}", err=True)
-    started = time.monotonic()
-    thread = Hdf5Thread()
-    pipeline, folder = start(plan, stop.wait, thread)
+    began = time.monotonic()
+    with started(plan, stop) as (pipeline, folder):
+        if not as_json:
+            click.echo(f"results in {folder.path}")
+        try:
+            with _progress(pipeline) as bar:
+                run_to_end(pipeline, stop, lambda: _advance(bar, pipeline))
+        except TagstreamError:
+            _report(folder.path, as_json)
+            raise
     if not as_json:
-        click.echo(f"results in {folder.path}")
-    try:
-        with _progress(pipeline) as bar:
-            run_to_end(pipeline, stop, lambda: _advance(bar, pipeline))
-    except TagstreamError:
-        _report(folder.path, as_json)
-        raise
-    if not as_json:
-        click.echo(_speed(pipeline.counters.received, time.monotonic() - started))
+        click.echo(_speed(pipeline.counters.received, time.monotonic() - began))
     _report(folder.path, as_json)
     if stop.requested:
         raise SystemExit(stop.exit_code)

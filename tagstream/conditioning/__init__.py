@@ -6,6 +6,6 @@ outside live time is dropped, dead time is cut. What happens to a tag depends on
 it alone, never on where a piece ends. Nothing here knows formats or tallies.
 """
 
-from tagstream.conditioning.conditioner import Conditioner
+from tagstream.conditioning.conditioner import Conditioned, conditioned
 
-__all__ = ["Conditioner"]
+__all__ = ["Conditioned", "conditioned"]

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Generator, Iterable, Iterator
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,52 +14,100 @@ from tagstream.conditioning.kernels import fill_dead_time_cut
 from tagstream.conditioning.order import Order
 from tagstream.conditioning.stretch import AssumedStretch, Stretch, VouchedStretch
 from tagstream.counters import Counters
+from tagstream.errors import InputError
 from tagstream.feeds import Arrivals
 from tagstream.settings import Settings
 from tagstream.units import TIME_LIMIT_PS
 
 
+@dataclass(frozen=True, slots=True)
+class Conditioned:
+    """The blocks that a piece of the feed completed, and the state of conditioning after it.
+
+    counters: a copy, taken when they agreed with the blocks. latest_ps: the latest time that
+    arrived. live_end_ps, last_tag_ps: end of the last block and its last tag; None before there
+    is one.
+    """
+
+    blocks: list[Block]
+    counters: Counters
+    latest_ps: int | None
+    live_end_ps: int | None
+    last_tag_ps: int | None
+
+
+def conditioned(
+    pieces: Iterable[Arrivals], settings: Settings, stopped: Callable[[], bool] = lambda: False
+) -> Generator[Conditioned]:
+    """A whole feed, piece by piece; at its end what was still waiting.
+
+    stopped: asked after each piece; True ends the feed there. An InputError of the feed comes
+    out after all that was good before it.
+    """
+    conditioner = Conditioner(settings)
+    broken: InputError | None = None
+    try:
+        for piece in pieces:
+            yield conditioner.push(piece)
+            if stopped():
+                break
+    except InputError as error:
+        broken = error
+    yield conditioner.finish()
+    if broken is not None:
+        raise broken
+
+
 class Conditioner:
     """Pieces as decoded to blocks of ordered tags in live time.
 
-    Blocks come in stream order, each as soon as nothing can change it. `counters` say what
-    became of every tag.
+    Blocks come in stream order, each as soon as nothing can change it.
     """
 
-    def __init__(self, settings: Settings, counters: Counters) -> None:
-        self.counters = counters
-        self.last_tag_ps: int | None = None
+    def __init__(self, settings: Settings) -> None:
+        self._counters = Counters()
+        self._live_end_ps: int | None = None
+        self._last_tag_ps: int | None = None
+        self._latest_ps: int | None = None
         delays = [channel.delay_ps for channel in settings.channels.values()]
         self._least_delay_ps, self._largest_delay_ps = min(delays), max(delays)
         self._dead_times = np.array([c.dead_time_ps for c in settings.channels.values()], np.int64)
         self._last_kept = np.zeros(len(delays), np.int64)
         self._ever_kept = np.zeros(len(delays), np.uint8)
         self._order = Order()
-        self._judge = Judge(settings, counters, self._order)
+        self._judge = Judge(settings, self._counters, self._order)
         self._stretch: Stretch | None = None
         self._vouched_to_ps: int | None = None  # raw end of the last complete interval
-        self.live_end_ps: int | None = None  # end of the last block
 
-    def push(self, piece: Arrivals) -> Iterator[Block]:
+    def push(self, piece: Arrivals) -> Conditioned:
         """The blocks that a piece completes."""
-        self.counters.arrived += piece.times_ps.size
+        self._counters.arrived += piece.times_ps.size
+        blocks = list(self._taken(piece))
+        if piece.times_ps.size:
+            self._latest_ps = int(piece.times_ps[-1])
+        return self._state(blocks)
+
+    def finish(self) -> Conditioned:
+        """The blocks that were still waiting when the feed ended."""
+        self._judge.end()
+        return self._state(list(self._end_stretch()))
+
+    def _state(self, blocks: list[Block]) -> Conditioned:
+        self._counters.in_flight = len(self._order) + self._judge.pending
+        counters = replace(self._counters, dropped=dict(self._counters.dropped))
+        return Conditioned(blocks, counters, self._latest_ps, self._live_end_ps, self._last_tag_ps)
+
+    def _taken(self, piece: Arrivals) -> Iterator[Block]:
         if self._interrupts(piece):
             yield from self._end_stretch()
         if piece.lossy:
-            self.counters.drop("in_gap", piece.times_ps.size)
+            self._counters.drop("in_gap", piece.times_ps.size)
             return
         self._open_stretch(piece)
         for _ in self._judge.judge(piece):
             yield from self._end_stretch()
             self._open_stretch(piece)
         yield from self._release(piece)
-        self.counters.in_flight = len(self._order) + self._judge.pending
-
-    def finish(self) -> Iterator[Block]:
-        """The blocks that were still waiting when the feed ended."""
-        self._judge.end()
-        yield from self._end_stretch()
-        self.counters.in_flight = 0
 
     def _interrupts(self, piece: Arrivals) -> bool:
         """Whether nothing in `piece` may be correlated with what came before it."""
@@ -75,7 +124,7 @@ class Conditioner:
     def _open_stretch(self, piece: Arrivals) -> None:
         if self._stretch is not None:
             return
-        before = -TIME_LIMIT_PS if self.live_end_ps is None else self.live_end_ps
+        before = -TIME_LIMIT_PS if self._live_end_ps is None else self._live_end_ps
         if piece.begin_ps is None:
             self._stretch = AssumedStretch(before)
         else:
@@ -112,13 +161,13 @@ class Conditioner:
         if self._stretch is None:
             return
         block, outside = self._stretch.block(times, channels, known_to_ps)
-        self.counters.drop("in_gap", outside)
+        self._counters.drop("in_gap", outside)
         if block is None:
             return
-        if block.opens and self.live_end_ps is not None:
-            self.counters.gaps += 1
-            self.counters.gap_time_ps += block.begin_ps - self.live_end_ps
-        self.live_end_ps = block.end_ps
+        if block.opens and self._live_end_ps is not None:
+            self._counters.gaps += 1
+            self._counters.gap_time_ps += block.begin_ps - self._live_end_ps
+        self._live_end_ps = block.end_ps
         yield self._without_dead_time(block)
 
     def _without_dead_time(self, block: Block) -> Block:
@@ -126,7 +175,7 @@ class Conditioner:
             kept = fill_dead_time_cut(
                 block.times_ps, block.channels, self._dead_times, self._last_kept, self._ever_kept
             )
-            self.counters.drop("dead_time", block.times_ps.size - kept)
+            self._counters.drop("dead_time", block.times_ps.size - kept)
             block = Block(
                 block.times_ps[:kept],
                 block.channels[:kept],
@@ -134,7 +183,7 @@ class Conditioner:
                 block.end_ps,
                 block.opens,
             )
-        self.counters.kept += block.times_ps.size
+        self._counters.kept += block.times_ps.size
         if block.times_ps.size:
-            self.last_tag_ps = int(block.times_ps[-1])
+            self._last_tag_ps = int(block.times_ps[-1])
         return block

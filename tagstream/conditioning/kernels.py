@@ -172,13 +172,13 @@ def fill_judged(
 def fill_bucketed(
     times_ps: NDArray[np.int64],
     channels: NDArray[np.uint8],
-    starts: NDArray[np.int64],
+    starts: NDArray[np.int32],
     out_times: NDArray[np.int64],
     out_channels: NDArray[np.uint8],
 ) -> None:
     """Copy tags nearly into order: by narrow intervals of time, in arrival order inside each.
 
-    times_ps, channels: n > 0. starts: int64, scratch, a power of two of intervals plus one.
+    times_ps, channels: n > 0. starts: int32, scratch, a power of two of intervals plus one.
     out_*: n. Afterwards tags are out of order only among the few of one interval, and equal
     times are in arrival order, so that `fill_ordered` has few moves left. Cost: three passes,
     whatever the disorder.

@@ -68,7 +68,7 @@ class Order:
                 return
             self._far_apart = True
         times, channels = np.empty_like(self._times), np.empty_like(self._channels)
-        intervals = np.empty((1 << size.bit_length()) + 1, np.int64)
+        intervals = np.empty((1 << size.bit_length()) + 1, np.int32)
         fill_bucketed(self._times, self._channels, intervals, times, channels)
         if fill_ordered(times, channels, MOST_MOVES_PER_TAG * size) < size:
             order = np.argsort(times, kind="stable")

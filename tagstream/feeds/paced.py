@@ -5,58 +5,39 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Generator, Iterator
 from dataclasses import replace
-from typing import Any
 
 import numpy as np
 
-from tagstream.feeds import Arrivals, Feed, TimeBase
+from tagstream.feeds import Arrivals
 from tagstream.units import PS_PER_S
 
 STEP_S = 0.1  # pieces are cut so that none waits longer than this for its own last tag
 
 
-class PacedFeed:
-    """Hands on the pieces of another feed when their time has come.
+def paced(
+    pieces: Generator[Arrivals],
+    pace: float,
+    wait: Callable[[float], bool],
+    clock: Callable[[], float] = time.monotonic,
+) -> Generator[Arrivals]:
+    """The pieces of a feed, cut small, each when its time has come.
 
-    pace: seconds of stream time per second of wall time. wait: sleeps for so many seconds;
-    may return early, and returns True when waiting makes no sense any more (a stop).
+    pace: seconds of stream time per second of wall time. wait: sleeps for so many seconds; may
+    return early, and returns True when waiting makes no sense any more (a stop).
     """
-
-    def __init__(
-        self,
-        feed: Feed,
-        pace: float,
-        wait: Callable[[float], bool],
-        clock: Callable[[], float] = time.monotonic,
-    ) -> None:
-        self._feed, self._pace, self._wait, self._clock = feed, pace, wait, clock
-
-    @property
-    def time_base(self) -> TimeBase:
-        return self._feed.time_base
-
-    @property
-    def truth(self) -> dict[str, Any]:
-        return self._feed.truth
-
-    @property
-    def progress(self) -> float | None:
-        return self._feed.progress
-
-    def pieces(self) -> Generator[Arrivals]:
-        step_ps = int(STEP_S * self._pace * PS_PER_S)
-        first_ps: int | None = None
-        started = self._clock()
-        for whole in self._feed.pieces():
-            for piece in cut_by_time(whole, step_ps):
-                last_ps = _last_ps(piece)
-                if first_ps is None:
-                    first_ps = last_ps
-                due = started + (last_ps - first_ps) / PS_PER_S / self._pace
-                while (left := due - self._clock()) > 0:
-                    if self._wait(left):
-                        break
-                yield piece
+    step_ps = int(STEP_S * pace * PS_PER_S)
+    first_ps: int | None = None
+    started = clock()
+    for whole in pieces:
+        for piece in cut_by_time(whole, step_ps):
+            last_ps = _last_ps(piece)
+            if first_ps is None:
+                first_ps = last_ps
+            due = started + (last_ps - first_ps) / PS_PER_S / pace
+            while (left := due - clock()) > 0:
+                if wait(left):
+                    break
+            yield piece
 
 
 def cut_by_time(piece: Arrivals, step_ps: int) -> Iterator[Arrivals]:

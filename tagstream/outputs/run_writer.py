@@ -48,12 +48,17 @@ class RunWriter:
             "pid": os.getpid(),
         }
         self._recent = RecentValues(header.spans, header.slice_ps)
-        self._log = EventLog(folder.path / "log.jsonl", clock)
-        self._write_latest(Snapshot((), {}, {"state": "starting"}))
-        replace_file(folder.path / "settings.toml", header.settings_text.encode())
-        self._history = History(folder.path / "history-0001.h5", header, clock)
-        folder.announce()
-        self.event("start", version=__version__, run_uuid=self._meta["run_uuid"])
+        with ExitStack() as opened:
+            opened.callback(folder.close)
+            self._log = EventLog(folder.path / "log.jsonl", clock)
+            opened.callback(self._log.close)
+            self._write_latest(Snapshot((), {}, {"state": "starting"}))
+            replace_file(folder.path / "settings.toml", header.settings_text.encode())
+            self._history = History(folder.path / "history-0001.h5", header, clock)
+            opened.callback(self._history.close)
+            folder.announce()
+            self.event("start", version=__version__, run_uuid=self._meta["run_uuid"])
+            opened.pop_all()  # all stands: from here on `close` has to close them
 
     def add_row(self, row: Row) -> None:
         """Append a finished slice to the history."""

@@ -168,9 +168,7 @@ def fill_close_pairs(
         while j + GROUP <= end:
             close = 0
             for g in range(GROUP):
-                close |= np.int64(
-                    times_ps[np.uint64(j + g)] - times_ps[np.uint64(j + g - 1)] <= half
-                )
+                close |= int(times_ps[np.uint64(j + g)] - times_ps[np.uint64(j + g - 1)] <= half)
             if close != 0:
                 for g in range(GROUP):
                     candidates[np.uint64(found)] = j + g

@@ -9,7 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from tagstream.block import Block
-from tagstream.conditioning import Conditioner
+from tagstream.conditioning import conditioned as stream
 from tagstream.counters import Counters
 from tagstream.feeds import Arrivals
 from tagstream.units import BEYOND_LIMIT_PS, TIME_LIMIT_PS
@@ -23,14 +23,13 @@ S = 10**12
 def conditioned(
     pieces: list[Arrivals], **tables: Any
 ) -> tuple[list[Block], list[tuple[int, int]], Counters]:
-    counters = Counters()
-    conditioner = Conditioner(make_settings(**tables), counters)
     blocks: list[Block] = []
-    for piece in pieces:
-        blocks += conditioner.push(piece)
+    counters = Counters()
+    for found in stream(pieces, make_settings(**tables)):
+        blocks += found.blocks
+        counters = found.counters
         decided = counters.kept + sum(counters.dropped.values())
         assert counters.received == decided
-    blocks += conditioner.finish()
     assert counters.in_flight == 0
     assert counters.arrived == counters.kept + sum(counters.dropped.values())
     kept = [(int(t), int(c)) for b in blocks for t, c in zip(b.times_ps, b.channels, strict=True)]

@@ -45,7 +45,7 @@ def test_dealing_out_to_intervals_is_stable_and_nearly_in_order(
     numbered = [(t, i % 256) for i, (t, _) in enumerate(events)] or [(5, 0)]
     times, marks = int64([t for t, _ in numbered]), np.array([m for _, m in numbered], np.uint8)
     out_times, out_marks = np.empty_like(times), np.empty_like(marks)
-    fill_bucketed(times, marks, np.empty(intervals + 1, np.int64), out_times, out_marks)
+    fill_bucketed(times, marks, np.empty(intervals + 1, np.int32), out_times, out_marks)
     fill_ordered(out_times, out_marks, 10**9)
     found = list(zip(out_times.tolist(), out_marks.tolist(), strict=True))
     assert found == naive.ordered(numbered)

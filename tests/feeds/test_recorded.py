@@ -11,8 +11,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from tagstream.block import Block
-from tagstream.conditioning.conditioner import Conditioner
+from tagstream.conditioning import conditioned as stream
 from tagstream.counters import Counters
 from tagstream.errors import InputError, SettingsError
 from tagstream.feeds import Arrivals, TimeBase
@@ -176,19 +175,16 @@ def streams(draw: st.DrawFn) -> list[Arrivals]:
 
 def conditioned(pieces: list[Arrivals]) -> tuple[list[tuple[object, ...]], Counters]:
     """Blocks, joined as long as their stretch goes on, and counters."""
-    counters = Counters()
-    conditioner = Conditioner(make_settings((0, 70, 0), (30, 0, 0), "100 ps"), counters)
-    blocks: list[Block] = [block for p in pieces for block in conditioner.push(p)]
-    blocks += conditioner.finish()
+    found = list(stream(pieces, make_settings((0, 70, 0), (30, 0, 0), "100 ps")))
     joined: list[tuple[object, ...]] = []
-    for b in blocks:
+    for b in [block for part in found for block in part.blocks]:
         tags = list(zip(b.times_ps.tolist(), b.channels.tolist(), strict=True))
         if b.opens or not joined:
             joined.append((b.begin_ps, b.end_ps, tags))
         else:
             begin, _, before = joined.pop()
             joined.append((begin, b.end_ps, [*before, *tags]))  # type: ignore[misc]
-    return joined, counters
+    return joined, found[-1].counters
 
 
 @given(streams())

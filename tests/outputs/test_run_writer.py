@@ -88,6 +88,7 @@ def test_latest_stands_before_anything_else_and_before_the_link(
         RunWriter(RunFolder.create(tmp_path, "run"), make_header())
     assert seen == [[".lock", "latest.h5", "log.jsonl", "settings.toml"]]
     assert not (tmp_path / "run").is_symlink()
+    assert not is_held(tmp_path / "run-0001")
 
 
 def test_a_snapshot_is_due_for_every_slice_of_a_second_but_not_more_often(

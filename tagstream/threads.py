@@ -1,7 +1,8 @@
-"""One thread for all that reads and writes files, beside the one that counts.
+"""Stages in threads of their own, with bounded queues between them.
 
-HDF5 calls of one process wait for each other anyway. So the thread that reads ahead also
-writes the results, between two reads, and the kernels never wait for a disk.
+Three threads share the work: one reads the feed and writes the results (HDF5 calls of one
+process wait for each other anyway, so all of them live there), one conditions, one counts. Which
+thread runs when changes nothing: each stage takes the pieces of the one before it in order.
 """
 
 from __future__ import annotations
@@ -9,20 +10,20 @@ from __future__ import annotations
 from collections import deque
 from collections.abc import Callable, Generator
 from concurrent.futures import Future, ThreadPoolExecutor
-from typing import Any
+from typing import Any, TypeVar
 
-from tagstream.feeds import Arrivals, Feed, TimeBase
 from tagstream.outputs import Row, RunHeader, Sink, Snapshot
 
+T = TypeVar("T")
 PIECES_AHEAD = 4  # enough to bridge the writing of a snapshot; few megabytes
 CALLS_WAITING = 256  # rows and events; beyond this the counting waits for the disk
 
 
-class Hdf5Thread:
+class OneThread:
     """Runs what it is given, in order. Close it at the end."""
 
-    def __init__(self) -> None:
-        self._pool = ThreadPoolExecutor(1, thread_name_prefix="hdf5")
+    def __init__(self, name: str) -> None:
+        self._pool = ThreadPoolExecutor(1, thread_name_prefix=name)
 
     def submit(self, function: Callable[..., Any], *arguments: Any) -> Future[Any]:
         """Run a call when its turn comes."""
@@ -33,42 +34,27 @@ class Hdf5Thread:
         self._pool.shutdown(wait=True)
 
 
-class ReadAhead:
-    """Another feed, read in the thread a few pieces ahead of where it is used."""
+def ahead(source: Generator[T], thread: OneThread) -> Generator[T]:
+    """What `source` yields, made in `thread` a few items ahead of where it is used.
 
-    def __init__(self, feed: Feed, thread: Hdf5Thread) -> None:
-        self._feed, self._thread = feed, thread
-
-    @property
-    def time_base(self) -> TimeBase:
-        return self._feed.time_base
-
-    @property
-    def truth(self) -> dict[str, Any]:
-        return self._feed.truth
-
-    @property
-    def progress(self) -> float | None:
-        return self._feed.progress
-
-    def pieces(self) -> Generator[Arrivals]:
-        source = self._feed.pieces()
-        ahead = deque(self._thread.submit(next, source, None) for _ in range(PIECES_AHEAD))
-        try:
-            while (piece := ahead.popleft().result()) is not None:
-                ahead.append(self._thread.submit(next, source, None))
-                yield piece
-        finally:
-            for future in ahead:
-                future.cancel()
-            self._thread.submit(source.close)
+    What it raises comes out after the items before it.
+    """
+    waiting = deque(thread.submit(next, source, None) for _ in range(PIECES_AHEAD))
+    try:
+        while (item := waiting.popleft().result()) is not None:
+            waiting.append(thread.submit(next, source, None))
+            yield item
+    finally:
+        for future in waiting:
+            future.cancel()
+        thread.submit(source.close)
 
 
 class SinkInThread:
     """Another sink, used in the thread alone. What it raises comes out at the next call."""
 
     def __init__(
-        self, open_sink: Callable[[RunHeader], Sink], header: RunHeader, thread: Hdf5Thread
+        self, open_sink: Callable[[RunHeader], Sink], header: RunHeader, thread: OneThread
     ) -> None:
         self._thread = thread
         self._sink: Sink = thread.submit(open_sink, header).result()
