@@ -48,7 +48,7 @@ def _counted(
     division = exact_division(bins_each_side, bin_ps)
     workers = max(1, min(os.cpu_count() or 1, starts.size // STARTS_A_THREAD))
     bounds = [starts.size * i // workers for i in range(workers + 1)]
-    partial = np.zeros((workers, 2 * bins_each_side + 1), np.int64)
+    partial = np.zeros((workers, 2 * bins_each_side + 2), np.int64)
 
     def fill(i: int) -> None:
         mine = starts[bounds[i] : bounds[i + 1]]
@@ -60,7 +60,7 @@ def _counted(
 
     with ThreadPoolExecutor(workers) as pool:
         list(pool.map(fill, range(workers)))
-    return np.asarray(partial.sum(axis=0))
+    return np.asarray(partial[:, :-1].sum(axis=0))
 
 
 def _times(name: str, values: ArrayLike) -> NDArray[np.int64]:

@@ -103,12 +103,11 @@ def draw_g2(figure: Figure, arrays: Mapping[str, NDArray[Any]], title: str) -> N
         axes.set_ylabel(G2)
         axes.set_ylim(bottom=0)
         _g2_points(close, arrays, slice(bins // 2 - CLOSE_BINS, bins // 2 + CLOSE_BINS + 1))
-        close.set_title(f"around zero lag; bars: {_percent(DEFAULT_LEVEL)} intervals")
+        close.set_title("around zero lag")
     axes.margins(x=0.01)
     axes.axhline(1, color=BAR, linestyle=":", zorder=0)
-    axes.set_title(
-        title if bins > MANY_BINS else f"{title}; bars: {_percent(DEFAULT_LEVEL)} intervals"
-    )
+    text = f"{title}; bars: {_percent(DEFAULT_LEVEL)} intervals"
+    figure.suptitle(text, x=0.01, horizontalalignment="left", fontsize=STYLE["axes.titlesize"])
 
 
 def _g2_points(axes: Axes, arrays: Mapping[str, NDArray[Any]], bins: slice) -> None:
@@ -158,14 +157,17 @@ def draw_peaks(axes: Axes, profile: Mapping[str, NDArray[Any]], name: str) -> No
 
 
 def draw_window_scan(axes: Axes, profile: Mapping[str, NDArray[Any]], name: str) -> None:
-    """The estimate against the width of its window: flat when peaks are alike and apart."""
+    """The estimate against the width of its window: flat when peaks are alike and apart.
+
+    Wider windows hold the counts of the narrower ones, so neighbouring points move together.
+    """
     scale, unit = _scale(float(profile["window_width_ps"].max()))
     width, value = profile["window_width_ps"] / scale, profile["window_value"]
     _points(axes, width, value, profile["window_lower"], profile["window_upper"])
     axes.set_xlabel(f"width of window ({unit})")
     axes.set_ylabel(name)
     axes.set_ylim(bottom=0)
-    axes.set_title("against window (wider ones hold the narrower)")
+    axes.set_title("against window")
 
 
 def _points(

@@ -5,17 +5,19 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import asdict, replace
 from datetime import UTC, datetime
-from math import floor, isfinite, log10
+from math import floor, inf, isfinite, isnan, log10
+from textwrap import wrap
 from typing import Any
 
 from tagstream.estimates import Estimate
 from tagstream.outputs.reader import Run
 
+WIDTH = 100
 COLUMN = 26
 
 
 def format_run(run: Run) -> str:
-    """A text of about 100 columns: estimates by span, rates, what became of the tags, truth."""
+    """A text of 100 columns: estimates by span, rates, what became of the tags, truth."""
     estimates = run.estimates
     lines = [*_head(run), ""]
     for name, spans in estimates.items():
@@ -49,17 +51,16 @@ def as_json(run: Run) -> dict[str, Any]:
 
 def format_estimate(found: Estimate) -> str:
     """A value with its interval: "0.0412 +0.0006 -0.0006", "< 0.012", "-"."""
-    if found.interval == "none":
+    if found.interval == "none" or isnan(found.value):
         return "-"
     unit = "" if found.unit == "1" else f" {found.unit}"
     if found.interval == "upper-limit":
         return f"< {_rounded(found.upper, found.upper)}{unit}"
     up, down = found.upper - found.value, found.value - found.lower
-    step = min(part for part in (up, down, abs(found.value) or 1.0) if part > 0)
-    if not (isfinite(up) or isfinite(down)):
-        return f"{found.value:.6g}{unit}"
-    if not isfinite(up):
-        return f"{_rounded(found.value, step)} +inf -{_rounded(down, step)}{unit}"
+    sides = [side for side in (up, down) if isfinite(side) and side > 0]
+    if not sides:
+        return f"{found.value:.6g}{' +inf' if up == inf else ''}{unit}"
+    step = max(min(sides), max(sides) / 10)  # a side that nearly vanishes asks for no digits
     value, plus, minus = (_rounded(part, step) for part in (found.value, up, down))
     return f"{value} +{plus} -{minus}{unit}"
 
@@ -83,11 +84,15 @@ def _estimate_lines(name: str, spans: Mapping[str, Estimate]) -> Iterator[str]:
         if found.interval != "none" and isfinite(found.raw_value) and _raw(found) != found:
             yield f"  {'':<10} {format_estimate(_raw(found)):<{COLUMN}} before corrections"
         if found.note:
-            yield f"  {'':<10} ! {found.note}"
+            yield from _wrapped(found.note, f"  {'':<10} ! ")
     if not spans:
         yield "  no slice has ended yet"
     for found in list(spans.values())[:1]:
-        yield f"  {found.level:.4g} interval; {found.method}"
+        yield from _wrapped(f"{100 * found.level:.4g} % interval; {found.method}", "  ")
+
+
+def _wrapped(text: str, start: str) -> list[str]:
+    return wrap(text, WIDTH, initial_indent=start, subsequent_indent=" " * len(start))
 
 
 def _raw(found: Estimate) -> Estimate:

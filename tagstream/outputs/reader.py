@@ -1,7 +1,7 @@
 """Reading a run, live or finished, without disturbing it.
 
 Every access reads anew, so a live run shows its current numbers. latest.h5 is opened without a
-lock and as a whole file; the history in SWMR mode.
+lock and as a whole file; the history, while it grows, in SWMR mode.
 """
 
 from __future__ import annotations
@@ -224,7 +224,7 @@ def _scalars(group: h5py.Group) -> dict[str, Any]:
 
 def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[Any]]:
     try:
-        file = h5py.File(path, "r", swmr=True, locking=False)
+        file = _open_history(path)
     except OSError as error:
         raise _not_results(path, error) from error
     with file:
@@ -239,6 +239,20 @@ def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[An
             absent = np.full(rows, np.nan)
             found[key] = numbers[:rows, columns[name]] if name in columns else absent
         return found
+
+
+def _open_history(path: Path) -> h5py.File:
+    """A history that grows, or was left so by a crash, in SWMR mode; a closed one as it is.
+
+    In SWMR mode HDF5 waits for ever for what a damaged file lacks, so damage is looked for
+    first. Bytes of the superblock: HDF5 File Format Specification 3.0, section II.A, version 3.
+    """
+    with path.open("rb") as plain:
+        head, size = plain.read(36), plain.seek(0, 2)
+    growing = len(head) == 36 and head[11] != 0
+    if growing and int.from_bytes(head[28:36], "little") > size:
+        raise OSError("its end is missing")
+    return h5py.File(path, "r", swmr=growing, locking=False)
 
 
 def _names(table: h5py.Dataset) -> list[str]:

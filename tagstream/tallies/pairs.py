@@ -27,7 +27,7 @@ class PairHistograms:
 
     pairs: channel indices of start and stop, one pair a histogram; start = stop means ordered
     pairs of distinct tags. number: of channels in the blocks. A pair counts when its later tag
-    comes. `counts` is int64, (len(pairs), 2K + 1); the caller may zero it.
+    comes. `counts` is int64, (len(pairs), 2K + 1); the caller may zero it between pieces.
 
     There are two ways, which give the same integers. Where few tags have another one in reach,
     all channels are gone through together in layers (kernels.fill_close_pairs): that costs
@@ -86,7 +86,7 @@ class PairHistograms:
         for channel in np.flatnonzero(self._wanted).tolist():
             old[channel] = self._select(self._old_times, self._old_channels, channel)
             new[channel] = self._select(times, channels, channel)
-        for (start, stop), counts in zip(self._pairs, self.counts, strict=True):
+        for (start, stop), counts in zip(self._pairs, self._all_counts, strict=False):
             all_starts = np.concatenate((old[start], new[start]))
             fill_pairs(all_starts, new[stop], self._division, counts)
             fill_pairs(new[start], old[stop], self._division, counts)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import errno
 import os
+import time
 from collections.abc import Iterator
 from dataclasses import replace
 from pathlib import Path
@@ -53,7 +54,7 @@ def tables(path: Path) -> tuple[np.ndarray[Any, Any], np.ndarray[Any, Any]]:
 def rows_in(path: Path) -> int:
     integers, numbers = tables(path)
     assert integers.shape[0] == numbers.shape[0]
-    return integers.shape[0]
+    return int(integers.shape[0])
 
 
 def test_layout(path: Path, history: History) -> None:
@@ -136,7 +137,7 @@ def test_a_closed_history_is_an_ordinary_file(path: Path, history: History) -> N
 def test_utc_is_the_time_of_writing(
     path: Path, history: History, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    monkeypatch.setattr(module.time, "time", lambda: 1_800_000_000.125)
+    monkeypatch.setattr(time, "time", lambda: 1_800_000_000.125)
     history.add(make_row(0))
     history.close()
     assert tables(path)[1][0, 0] == 1_800_000_000.125
@@ -162,7 +163,7 @@ def test_it_has_its_name_only_when_readers_can_open_it(
             assert file["run/integers"].shape[0] == 0
         os.replace(source, target)
 
-    monkeypatch.setattr(module.os, "rename", look)
+    monkeypatch.setattr(os, "rename", look)
     History(path, make_header(), clock).close()
     assert [p.name for p in path.parent.iterdir()] == [path.name]
 

@@ -11,8 +11,7 @@ import h5py
 import numpy as np
 import pytest
 from nexusformat.nexus import nxload
-from silx.io.nxdata import get_default
-from silx.io.nxdata import parse as silx_nxdata
+from silx.io.nxdata.parse import NXdata, get_default
 
 from tagstream.outputs import RunHeader, Snapshot
 from tagstream.outputs.latest import latest_image
@@ -82,9 +81,9 @@ def test_the_root_leads_to_the_entry_and_the_entry_to_the_first_tally(entry: h5p
 
 
 def test_the_entry_says_which_run_it_is(entry: h5py.Group) -> None:
-    texts = {name: "text" for name in ("title", "settings", "tick", "origin_utc", *META)}
+    texts = dict.fromkeys(("title", "settings", "tick", "origin_utc", *META), "text")
     del texts["version"]
-    expected = {name: (kind, (), None) for name, kind in texts.items()}
+    expected: dict[str, Any] = {name: (kind, (), None) for name, kind in texts.items()}
     expected |= {"pid": ("<i8", (), None), "origin_ticks": ("<i8", (), None)}
     expected |= {"slice_ps": ("<i8", (), "ps"), "spans": ("text", (2,), None)}
     assert form(entry) == expected
@@ -145,10 +144,10 @@ def test_an_estimate_field_by_field(entry: h5py.Group) -> None:
     for name, unit in (("g2_zero", "1"), ("rate_a", "Hz")):
         group = entry["estimates"][name]
         assert form(group) == {
-            **{key: ("<f8", (2,), unit) for key in numbers},
+            **dict.fromkeys(numbers, ("<f8", (2,), unit)),
             "level": ("<f8", (2,), "1"),
             "counts": ("<i8", (2,), None),
-            **{key: ("text", (2,), None) for key in texts},
+            **dict.fromkeys(texts, ("text", (2,), None)),
             "unit": ("text", (), None),
         }
         assert group["unit"].asstr()[()] == unit
@@ -209,7 +208,7 @@ def test_the_history_of_an_estimate_has_columns_of_equal_length(entry: h5py.Grou
     group = entry["estimates/rate_a/history"]
     assert form(group) == {
         "time": ("<f8", (3,), "s"),
-        **{key: ("<f8", (3,), "Hz") for key in ("value", "lower", "upper", "value_errors")},
+        **dict.fromkeys(("value", "lower", "upper", "value_errors"), ("<f8", (3,), "Hz")),
     }
     assert group["time"][()].tolist() == [1.0, 2.0, 3.0]
     assert group["value"][()].tolist() == [1000.0, 1001.0, 1002.0]
@@ -217,9 +216,10 @@ def test_the_history_of_an_estimate_has_columns_of_equal_length(entry: h5py.Grou
     assert group.attrs["span"] == "10 s"
 
 
-def valid_data(path: Path, name: str) -> Any:
+def valid_data(path: Path, name: str) -> tuple[str, tuple[int, ...], list[tuple[int, ...]]]:
+    """Name and shape of the signal, shapes of the axes, as silx sees them."""
     with h5py.File(path, "r") as file:
-        data = silx_nxdata.NXdata(file[name], validate=True)
+        data: Any = NXdata(file[name], validate=True)
         assert data.is_valid, (name, data.issues)
         return data.signal_name, tuple(data.signal.shape), [axis.shape for axis in data.axes]
 
@@ -261,7 +261,7 @@ def test_two_viewers_find_the_default_plot(
 ) -> None:
     path = write(tmp_path, header, snapshot, rows)
     with h5py.File(path, "r") as file:
-        default = get_default(file)
+        default: Any = get_default(file)
         assert default.is_valid, default.issues
         assert default.group.name == shown
         assert default.signal.shape == (size,)

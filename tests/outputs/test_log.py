@@ -101,7 +101,7 @@ def test_an_existing_log_is_continued(tmp_path: Path, log: EventLog, clock: Fake
 
 def test_a_log_that_cannot_be_opened(tmp_path: Path, clock: FakeClock) -> None:
     (tmp_path / "log.jsonl").mkdir()
-    with pytest.raises(ResultsError, match="log.jsonl: results cannot be written"):
+    with pytest.raises(ResultsError, match=r"log\.jsonl: results cannot be written"):
         EventLog(tmp_path / "log.jsonl", clock)
 
 

@@ -177,6 +177,22 @@ def test_a_damaged_file_is_told_with_its_name(folder: Path, run: Run, name: str)
     assert str(path.resolve()) in str(caught.value)
 
 
+@pytest.mark.parametrize("lost", [1, 500, 5000])
+def test_a_cut_off_copy_of_a_growing_history_is_told_and_not_waited_for(
+    tmp_path: Path, lost: int
+) -> None:
+    writer = RunWriter(RunFolder.create(tmp_path, "run"), make_header())
+    writer.add_row(make_row(0))
+    writer.replace_snapshot(make_snapshot())
+    copied = shutil.copytree(tmp_path / "run-0001", tmp_path / "copied")
+    writer.close(make_snapshot())
+    assert open_run(copied).history("rate_a")["value"].tolist() == [1000.0]
+    content = (copied / "history-0001.h5").read_bytes()
+    (copied / "history-0001.h5").write_bytes(content[:-lost])
+    with pytest.raises(ResultsError, match=r"history-0001\.h5.*its end is missing"):
+        open_run(copied).history("rate_a")
+
+
 @pytest.mark.parametrize("groups", [(), ("run",), ("run", "run/estimates/g2_zero")])
 def test_a_latest_of_another_program_is_told(tmp_path: Path, groups: tuple[str, ...]) -> None:
     with h5py.File(tmp_path / "latest.h5", "w") as file:
