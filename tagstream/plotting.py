@@ -138,7 +138,8 @@ def draw_history(
     axes.plot(time_s, value, color=INK, marker=few, markerfacecolor="white")
     if few:  # a lone point has no band to be seen
         axes.vlines(time_s, lower, upper, color=BAR, linewidth=0.9, zorder=1)
-    axes.set_ylabel(name if found.unit == "1" else f"{name} ({found.unit})")
+    label = name if found.unit == "1" else f"{name} ({found.unit})"
+    figure.supylabel(label, fontsize=STYLE["font.size"])
     over = "the run so far" if span == "run" else f"the last {span}"
     axes.set_title(f"over {over}; band: {_percent(found.level)} interval")
     axes.set_xlabel("stream time (s)")

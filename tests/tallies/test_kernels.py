@@ -22,7 +22,7 @@ from tests.strategies import int64, sorted_times
 def pairs(starts: list[int], stops: list[int], bin_ps: int, bins: int) -> list[int]:
     counts = np.zeros(2 * bins + 2, np.int64)
     fill_pairs(int64(starts), int64(stops), exact_division(bins, bin_ps), counts)
-    return counts[:-1].tolist()
+    return [int(count) for count in counts[:-1]]
 
 
 @given(sorted_times(), sorted_times(), st.integers(1, 60), st.integers(1, 20))
