@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 
 from tagstream.conditioning import conditioned
+from tagstream.conditioning import kernels as conditioning_kernels
 from tagstream.errors import SettingsError
 from tagstream.feeds import Feed, build_feed
 from tagstream.feeds.paced import paced
@@ -19,6 +21,7 @@ from tagstream.service import StopRequest
 from tagstream.settings import Settings
 from tagstream.settings.feeds import LIVE_KINDS
 from tagstream.settings.load import LoadedSettings
+from tagstream.tallies import kernels as tally_kernels
 from tagstream.threads import OneThread, SinkInThread, ahead
 
 
@@ -53,16 +56,28 @@ def feed_of_recordings(paths: tuple[Path, ...], settings: Settings) -> Feed:
     return RecordingsFeed(list(paths), settings.rolling.slice_ps)
 
 
+@dataclass(frozen=True, slots=True)
+class Started:
+    """A run that is ready to step. began_s: when its feed began to be read, monotonic clock."""
+
+    pipeline: Pipeline
+    folder: RunFolder
+    began_s: float
+
+
 @contextmanager
-def started(plan: Plan, stop: StopRequest) -> Iterator[tuple[Pipeline, RunFolder]]:
+def started(plan: Plan, stop: StopRequest) -> Iterator[Started]:
     """The feed open, the run folder made and the stages joined, each in its thread.
 
-    Raises InputError when the feed has nothing good, before a folder is made; ResultsError when
-    none can be made.
+    Kernels are loaded or compiled before the first tag is read. Raises InputError when the feed
+    has nothing good, before a folder is made; ResultsError when none can be made.
     """
     settings = plan.loaded.settings
     files, conditioning = OneThread("files"), OneThread("conditioning")
     folders: list[RunFolder] = []
+    warm = conditioning.submit(conditioning_kernels.warm_up)
+    tally_kernels.warm_up()
+    warm.result()
 
     def open_writer(header: RunHeader) -> RunWriter:
         folder = RunFolder.create(settings.results.folder, plan.name or settings.results.name)
@@ -72,6 +87,7 @@ def started(plan: Plan, stop: StopRequest) -> Iterator[tuple[Pipeline, RunFolder
     def open_sink(header: RunHeader) -> SinkInThread:
         return SinkInThread(open_writer, header, files)
 
+    began_s = time.monotonic()
     pieces = ahead(plan.feed.pieces(), files)
     if plan.pace is not None:
         pieces = paced(pieces, plan.pace, stop.wait)
@@ -80,7 +96,7 @@ def started(plan: Plan, stop: StopRequest) -> Iterator[tuple[Pipeline, RunFolder
         pipeline = Pipeline(settings, plan.loaded.to_toml(), plan.feed, stream, open_sink)
         for text in plan.loaded.warnings:
             pipeline.sink.event("warning", text=text)
-        yield pipeline, folders[0]
+        yield Started(pipeline, folders[0], began_s)
     finally:
         stream.close()
         conditioning.submit(pieces.close)

@@ -219,6 +219,7 @@ class Pipeline:
             tick=format_time(base.tick),
             origin_ticks=base.origin_ticks,
             origin_utc=base.origin_utc,
+            recorded_uuid=base.recorded_uuid,
             truth=self.feed.truth,
         )
 

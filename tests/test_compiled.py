@@ -63,3 +63,19 @@ def test_folders_of_other_sources_go_once_they_are_a_day_old(tmp_path: Path) -> 
     run({"XDG_CACHE_HOME": str(tmp_path)}, "import tagstream.compiled")
     assert not old.exists()
     assert young.exists()
+
+
+def test_a_run_compiles_nothing_after_it_was_warmed() -> None:
+    from tagstream.conditioning import kernels as conditioning
+    from tagstream.tallies import kernels as tallies
+
+    conditioning.warm_up()
+    tallies.warm_up()
+    before = {
+        name: len(made.signatures)
+        for module in (conditioning, tallies)
+        for name, made in vars(module).items()
+        if hasattr(made, "signatures")
+    }
+    assert {name for name in before if name.startswith("fill_")} >= {"fill_judged", "fill_pairs"}
+    assert all(before.values()), before

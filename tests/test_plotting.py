@@ -165,7 +165,7 @@ def test_histories_of_any_length_and_without_numbers_can_be_drawn(count: int) ->
         figure = Figure()
         made = {**rows(count), "value": np.full(count, value)}
         draw_history(figure, made, "g2_zero", "run", make_estimate())
-        figure.canvas.draw()
+        figure.draw_without_rendering()
 
 
 def test_a_run_whose_estimate_has_no_number_yet_can_be_drawn(tmp_path: Path) -> None:

@@ -27,8 +27,8 @@ def conduct(plan: Plan, as_json: bool) -> None:
     stop.install()
     for text in plan.loaded.warnings:
         click.echo(f"warning: {text}", err=True)
-    began = time.monotonic()
-    with started(plan, stop) as (pipeline, folder):
+    with started(plan, stop) as run:
+        pipeline, folder = run.pipeline, run.folder
         if not as_json:
             click.echo(f"results in {folder.path}")
         try:
@@ -37,8 +37,9 @@ def conduct(plan: Plan, as_json: bool) -> None:
         except TagstreamError:
             _report(folder.path, as_json)
             raise
+        seconds = time.monotonic() - run.began_s
     if not as_json:
-        click.echo(_speed(pipeline.counters.received, time.monotonic() - began))
+        click.echo(_speed(pipeline.counters.received, seconds))
     _report(folder.path, as_json)
     if stop.requested:
         raise SystemExit(stop.exit_code)

@@ -256,3 +256,29 @@ def fill_dead_time_cut(
         channels[kept] = channel
         kept += 1
     return kept
+
+
+def warm_up() -> None:
+    """Compile every kernel here, or load it, for the types that a run uses."""
+    times, channels = np.arange(4, dtype=np.int64), np.zeros(4, np.uint8)
+    delays, state = np.zeros(256, np.int64), np.zeros(STATE_SIZE, np.int64)
+    rules = np.array([10, 100, 1 << 62, 0, 1 << 61], np.int64)
+    pending = np.zeros((2, CONFIRMATIONS + 1), np.int64)
+    for inputs in (channels, channels.astype(np.uint16)):
+        fill_judged(
+            times,
+            inputs,
+            rules,
+            np.zeros(1 << 8 * inputs.itemsize, np.uint8),
+            delays,
+            state,
+            pending[0],
+            pending[1],
+            np.empty(4, np.int64),
+            np.empty(4, np.uint8),
+            np.zeros(COUNT_SIZE, np.int64),
+        )
+    starts = np.zeros(9, np.int32)
+    fill_bucketed(times, channels, starts, np.empty_like(times), np.empty_like(channels))
+    fill_ordered(times, channels, 8)
+    fill_dead_time_cut(times, channels, delays, np.zeros(256, np.int64), np.zeros(256, np.uint8))

@@ -48,12 +48,13 @@ class TimeBase:
 
     tick: the native tick in ps. origin_ticks: the native count at stream time zero, None for
     feeds whose source counts from zero. origin_utc: the wall time of the origin, ISO 8601, if
-    known.
+    known. recorded_uuid: of the run that made a recording, if it is one of this program.
     """
 
     tick: Fraction
     origin_ticks: int | None = None
     origin_utc: str | None = None
+    recorded_uuid: str | None = None
 
 
 class Feed(Protocol):

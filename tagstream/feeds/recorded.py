@@ -102,7 +102,8 @@ class RecordingsFeed:
         """As `Feed.time_base`."""
         first = self._segments[0]
         ticks, utc = first.header.moved(self._origin_ps, first.tick)
-        return TimeBase(first.tick, ticks, utc)
+        own_uuid = None if first.foreign else first.header.run_uuid
+        return TimeBase(first.tick, ticks, utc, own_uuid)
 
     @property
     def truth(self) -> dict[str, Any]:

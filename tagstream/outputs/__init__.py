@@ -24,7 +24,8 @@ class RunHeader:
     spans: names, "run" first, then as in the settings ("10 s", "1 min").
     tallies: name -> {"kind": ..., and what describes it: "start", "stop"}.
     estimates: name -> unit of the value.
-    tick: the native tick as text. truth: what a simulation knows, by name, else empty.
+    tick: the native tick as text. recorded_uuid: of the run that made the recording replayed.
+    truth: what a simulation knows, by name, else empty.
     """
 
     title: str
@@ -37,6 +38,7 @@ class RunHeader:
     tick: str = "1 ps"
     origin_ticks: int | None = None
     origin_utc: str | None = None
+    recorded_uuid: str | None = None
     truth: Mapping[str, Any] = field(default_factory=dict)
 
 

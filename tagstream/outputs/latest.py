@@ -60,6 +60,8 @@ def _write_entry(entry: h5py.Group, header: RunHeader, meta: Meta) -> None:
         _put(entry, "origin_ticks", header.origin_ticks)
     if header.origin_utc is not None:
         _put(entry, "origin_utc", header.origin_utc)
+    if header.recorded_uuid is not None:
+        _put(entry, "recorded_uuid", header.recorded_uuid)
     for name, value in meta.items():
         if name != "version":
             _put(entry, name, value)

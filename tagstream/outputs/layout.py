@@ -3,8 +3,8 @@
 /                             NXroot, default = "run"
 /run                          NXentry; default = the first tally, else /run/estimates
     title, start_time, end_time (at the end), program_name (version), settings
-    run_uuid, updated_utc, host, pid, tick, slice_ps, spans, origin_ticks, origin_utc (if
-    known)
+    run_uuid, updated_utc, host, pid, tick, slice_ps, spans; if known origin_ticks, origin_utc,
+    recorded_uuid (of the run that is replayed)
 /run/<tally>                  NXdata, span "run"; other spans /run/<tally>_<span>, as hbt_10s
 /run/estimates/<estimate>     one entry per span in: spans, value, lower, upper, level, counts,
     interval, method, reason, note, raw_value, raw_lower, raw_upper; unit

@@ -213,3 +213,17 @@ def fill_close_pairs(
                 )
             found = left
             distance += 1
+
+
+def warm_up() -> None:
+    """Compile every kernel here, or load it, for the types that a run uses."""
+    times, channels = np.arange(4, dtype=np.int64), np.zeros(4, np.uint8)
+    room, wanted = np.empty(5, np.int64), np.ones(1, np.uint8)
+    division, counts = np.array([2, 0, 0], np.int64), np.zeros(4, np.int64)
+    fill_selected(times, channels, 0, room)
+    fill_wanted(times, channels, wanted, room, np.empty(5, np.uint8))
+    fill_counts(channels, counts)
+    fill_periods(times, np.zeros(4, np.int64), np.zeros(3, np.int64))
+    fill_pairs(times, times, division, counts)
+    targets, candidates = np.zeros((2, 1, 1), np.int64), np.empty(CHUNK + 1, np.int64)
+    fill_close_pairs(times, channels, 4, division, 3, 1, targets, candidates, counts)

@@ -89,7 +89,8 @@ def test_moving_the_origin_moves_its_wall_time(tmp_path: Path) -> None:
     path = made.write(tmp_path / "a.h5", [piece([(90 * PS_PER_S, 1)])], header=header)
     feed = feed_of(path)
     assert tags_of(list(feed.pieces())) == [(0, 1)]
-    assert feed.time_base == TimeBase(Fraction(1), None, "2026-12-01T08:01:30.000000+00:00")
+    moved = "2026-12-01T08:01:30.000000+00:00"
+    assert feed.time_base == TimeBase(Fraction(1), None, moved, header.run_uuid)
 
 
 def test_a_time_past_the_limit_stays_past_it_when_the_origin_moves(tmp_path: Path) -> None:

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+from fractions import Fraction
 from pathlib import Path
 
 import h5py
 import numpy as np
 import pytest
 
+from tagstream.recording import RecordingReader, RecordingWriter
 from tests.flow.conftest import Caller
 
 
@@ -75,3 +78,32 @@ def test_other_delays_on_replay_move_the_histogram(
     moved = integers(settings.parent / "runs/moved")["run/hbt/counts"]
     # Only pairs at the edges of the run or of a slice can differ.
     assert np.abs(moved[25:] - reference["run/hbt/counts"][:-25]).sum() <= 2
+
+
+def test_a_replay_names_the_run_that_it_replays(
+    settings: Path, recording: Path, tagstream: Caller
+) -> None:
+    assert tagstream("replay", settings, recording).code == 0
+    with h5py.File(recording) as made, h5py.File(settings.parent / "runs/flow/latest.h5") as run:
+        made_uuid = made["run/entry_identifier_uuid"].asstr()[()]
+        assert run["run/recorded_uuid"].asstr()[()] == made_uuid
+        assert run["run/run_uuid"].asstr()[()] != made_uuid
+
+
+def test_segments_of_one_run_replay_as_one(
+    settings: Path, recording: Path, reference: dict[str, np.ndarray], tagstream: Caller
+) -> None:
+    with RecordingReader(recording) as whole:
+        header, pieces = whole.header, list(whole.pieces())
+    paths = [settings.parent / "part-2.h5", settings.parent / "part-1.h5"]
+    for number, path in ((1, paths[1]), (2, paths[0])):
+        with RecordingWriter(
+            path, tick=Fraction(1), header=replace(header, segment=number)
+        ) as writer:
+            for piece in pieces[:2] if number == 1 else pieces[2:]:
+                writer.add(
+                    piece.times_ps, piece.inputs, piece.begin_ps, piece.end_ps, piece.complete
+                )
+    assert len(pieces) > 2 or all(piece.complete for piece in pieces)
+    assert tagstream("replay", settings, *paths, "--name", "parts").code == 0
+    assert_same(integers(settings.parent / "runs/parts"), reference)
