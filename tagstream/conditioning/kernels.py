@@ -193,14 +193,17 @@ def fill_bucketed(
     starts[:] = 0
     for t in times_ps:
         starts[np.uint64(((t - least) >> shift) + 1)] += 1
+    total = starts[0]
     for i in range(1, starts.size):
-        starts[i] += starts[i - 1]
+        total += starts[i]
+        starts[i] = total
     for i in range(times_ps.size):
-        interval = np.uint64((times_ps[i] - least) >> shift)
-        place = np.uint64(starts[interval])
-        starts[interval] += 1
-        out_times[place] = times_ps[i]
-        out_channels[place] = channels[i]
+        t = times_ps[i]
+        interval = np.uint64((t - least) >> shift)
+        place = starts[interval]
+        starts[interval] = place + 1
+        out_times[np.uint64(place)] = t
+        out_channels[np.uint64(place)] = channels[i]
 
 
 @kernel
@@ -212,18 +215,20 @@ def fill_ordered(times_ps: NDArray[np.int64], channels: NDArray[np.uint8], most_
     order is still in place, so a stable sort can go on from it); returns n when done.
     """
     moves = 0
+    before = times_ps[0] if times_ps.size > 0 else 0
     for i in range(1, times_ps.size):
         t = times_ps[i]
-        if t >= times_ps[i - 1]:
+        if t >= before:
+            before = t
             continue
         channel = channels[i]
         j = i
-        while j > 0 and times_ps[j - 1] > t:
-            times_ps[j] = times_ps[j - 1]
-            channels[j] = channels[j - 1]
+        while j > 0 and times_ps[np.uint64(j - 1)] > t:
+            times_ps[np.uint64(j)] = times_ps[np.uint64(j - 1)]
+            channels[np.uint64(j)] = channels[np.uint64(j - 1)]
             j -= 1
-        times_ps[j] = t
-        channels[j] = channel
+        times_ps[np.uint64(j)] = t
+        channels[np.uint64(j)] = channel
         moves += i - j
         if moves > most_moves:
             return i + 1
