@@ -7,7 +7,7 @@ from numpy.typing import NDArray
 
 from tagstream.conditioning.kernels import fill_bucketed, fill_ordered
 
-MOVES_PER_TAG = 8  # beyond this, dealing tags out to intervals of time beats moving them
+MOVES_PER_TAG = 2  # beyond this, dealing tags out to intervals of time beats moving them
 MOST_MOVES_PER_TAG = 64  # in intervals: beyond this the light is so bunched that sorting beats it
 
 

@@ -91,14 +91,14 @@ def fill_periods(
 
 
 @kernel
-def bin_of(twice: int, division: NDArray[np.int64]) -> np.uint64:
+def bin_of(twice: int, divisor: int, multiplier: int, shift: int) -> np.uint64:
     """twice // divisor for twice >= 0, by multiplication where that is exact.
 
-    division: int64 [divisor, multiplier, shift] of `exact_division`; multiplier 0 divides.
+    divisor, multiplier, shift: of `bins.exact_division`; multiplier 0 divides.
     """
-    if division[1] != 0:
-        return np.uint64((twice * division[1]) >> division[2])
-    return np.uint64(twice) // np.uint64(division[0])
+    if multiplier != 0:
+        return np.uint64((twice * multiplier) >> shift)
+    return np.uint64(twice) // np.uint64(divisor)
 
 
 @kernel
@@ -119,8 +119,9 @@ def fill_pairs(
     FOUR at a time; what is out of reach among the four goes to the last entry, since leaving it
     out would be a branch that nothing foretells. Cost: one pass over both, a step per pair.
     """
+    divisor, multiplier, places = division[0], division[1], division[2]
     scrap = counts.size - 1
-    reach = scrap * (division[0] // 2)  # twice the distance from zero to the outer edges
+    reach = scrap * (divisor // 2)  # twice the distance from zero to the outer edges
     most = stops_ps.size
     low = 0
     for i in range(starts_ps.size):
@@ -133,8 +134,8 @@ def fill_pairs(
         while j + FOUR <= most:
             for g in range(FOUR):
                 twice = 2 * stops_ps[np.uint64(j + g)] + shift
-                k = bin_of(twice, division) if twice < 2 * reach else np.uint64(scrap)
-                counts[k] += 1
+                k = bin_of(twice, divisor, multiplier, places)
+                counts[k if twice < 2 * reach else np.uint64(scrap)] += 1
             j += FOUR
             if 2 * stops_ps[np.uint64(j - 1)] + shift >= 2 * reach:
                 break
@@ -143,7 +144,7 @@ def fill_pairs(
                 twice = 2 * stops_ps[np.uint64(j)] + shift
                 if twice >= 2 * reach:
                     break
-                counts[bin_of(twice, division)] += 1
+                counts[bin_of(twice, divisor, multiplier, places)] += 1
                 j += 1
 
 
@@ -205,7 +206,9 @@ def fill_close_pairs(
                     + np.int64(channels[np.uint64(later)])
                 )
                 for order in range(targets.shape[1]):
-                    k = bin_of(reach + targets[0, order, pair] * twice, division)
+                    lag = reach + targets[0, order, pair] * twice
+                    # Read anew each time: kept in registers they push out what the loop needs more.
+                    k = bin_of(lag, division[0], division[1], division[2])
                     counts[np.uint64(targets[1, order, pair]) + k] += 1
                 candidates[np.uint64(left)] = later
                 left += (

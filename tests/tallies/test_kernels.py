@@ -94,7 +94,7 @@ def test_the_bin_of_a_doubled_lag_is_exact(bin_ps: int, bins: int, data: st.Data
     multiple = st.integers(0, 2 * bins + 1).map(lambda k: 2 * bin_ps * k)
     near = st.builds(lambda x, d: min(max(x + d, 0), furthest), multiple, st.integers(-1, 1))
     for twice in data.draw(st.lists(near | st.integers(0, furthest), min_size=20)):
-        assert bin_of(twice, division) == twice // (2 * bin_ps)
+        assert bin_of(twice, *division) == twice // (2 * bin_ps)
 
 
 def test_both_ways_of_division_are_used() -> None:
