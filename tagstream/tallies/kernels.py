@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from tagstream.compiled import kernel
 
 CHUNK = 1024  # tags whose candidates are kept at a time: they stay in the nearest cache
+FEW_CHANNELS = 8  # up to which counting channel by channel is faster
 TWO = 2  # steps of a pointer that are taken without asking whether they are needed
 FOUR = 4  # pairs that are taken together
 GROUP = 8  # tags that are passed over together when none has a close neighbour
@@ -61,9 +62,20 @@ def fill_wanted(
 
 @kernel
 def fill_counts(channels: NDArray[np.uint8], counts: NDArray[np.int64]) -> None:
-    """Add the number of tags of each channel to `counts` (int64, by channel)."""
-    for i in range(channels.size):
-        counts[channels[i]] += 1
+    """Add the number of tags of each channel to `counts` (int64, by channel).
+
+    Of few channels each is compared with all tags, many at a time; that beats one counter after
+    the other, which waits for itself where one channel is frequent.
+    """
+    if counts.size <= FEW_CHANNELS:
+        for channel in range(counts.size):
+            found = 0
+            for i in range(channels.size):
+                found += int(channels[i] == channel)
+            counts[channel] += found
+    else:
+        for i in range(channels.size):
+            counts[np.uint64(channels[i])] += 1
 
 
 @kernel
@@ -77,7 +89,8 @@ def fill_periods(
     [sum of intervals in ps, their number, how many are longer than 1.5 times the one before],
     added to.
     """
-    for i in range(times_ps.size):
+    size = times_ps.size
+    for i in range(min(size, 2)):
         if last[0] == 1:
             interval = times_ps[i] - last[1]
             sums[0] += interval
@@ -88,6 +101,18 @@ def fill_periods(
             last[3] = interval
         last[0] = 1
         last[1] = times_ps[i]
+    if size <= 2:
+        return
+    missed = 0
+    for i in range(2, size):
+        before = times_ps[np.uint64(i - 1)] - times_ps[np.uint64(i - 2)]
+        missed += int(2 * (times_ps[np.uint64(i)] - times_ps[np.uint64(i - 1)]) > 3 * before)
+    sums[0] += times_ps[size - 1] - times_ps[1]
+    sums[1] += size - 2
+    sums[2] += missed
+    last[1] = times_ps[size - 1]
+    last[2] = 1
+    last[3] = times_ps[size - 1] - times_ps[size - 2]
 
 
 @kernel

@@ -77,6 +77,9 @@ def test_selection_and_counts(tags: list[tuple[int, int]]) -> None:
     counts = np.zeros(4, np.int64)
     fill_counts(np.array(channels, np.uint8), counts)
     assert list(counts) == naive.channel_counts(channels, 4)
+    many = np.zeros(20, np.int64)
+    fill_counts(np.array(channels, np.uint8), many)
+    assert list(many) == naive.channel_counts(channels, 20)
 
 
 @given(sorted_times(), st.integers(0, 40))
