@@ -34,6 +34,7 @@ def cross_correlation(
         )
     starts = _times("start_ps", start_ps)
     stops = starts if stop_ps is start_ps else _times("stop_ps", stop_ps)
+    _check_span(starts, stops)
     bins_each_side, width = int(max_lag_ps) // int(bin_ps), int(bin_ps)
     counts = _counted(starts, stops, bins_each_side, width)
     if stops is starts:
@@ -61,6 +62,14 @@ def _counted(
     with ThreadPoolExecutor(workers) as pool:
         list(pool.map(fill, range(workers)))
     return np.asarray(partial[:, :-1].sum(axis=0))
+
+
+def _check_span(starts: NDArray[np.int64], stops: NDArray[np.int64]) -> None:
+    both = [array for array in (starts, stops) if array.size]
+    if both:
+        first, last = min(int(a[0]) for a in both), max(int(a[-1]) for a in both)
+        if last - first >= 2**63:
+            raise ValueError(f"times from {first} to {last} ps are further apart than 2^63 ps")
 
 
 def _times(name: str, values: ArrayLike) -> NDArray[np.int64]:

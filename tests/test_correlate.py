@@ -36,6 +36,7 @@ def test_one_array_twice_is_one_channel(times: list[int], bin_ps: int) -> None:
         ([1], 12, 5, ValueError, "multiple of bin_ps = 5"),
         ([1], 10, 0, ValueError, "bin_ps = 0"),
         (np.array([2**63], np.uint64), 10, 5, ValueError, "63 bits"),
+        ([-(2**63) + 1, 5], 10, 5, ValueError, "further apart"),
     ],
 )
 def test_bad_input(

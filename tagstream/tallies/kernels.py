@@ -138,7 +138,7 @@ def fill_pairs(
     starts_ps, stops_ps: int64, non-decreasing. division: of 2 bin, see `bin_of`. counts: int64,
     2K + 2; bin k = -K..K is counts[k + K] and holds the lags with
     floor((2 lag + bin) / (2 bin)) = k: half-open, centred on k bin. Lags outside all bins are
-    not counted; what the last entry holds means nothing. Doubled times keep everything whole.
+    not counted; what the last entry holds means nothing. Doubled lags keep everything whole.
 
     Two pointers: of each start the first stop in reach is found, and those that follow are taken
     FOUR at a time; what is out of reach among the four goes to the last entry, since leaving it
@@ -147,29 +147,31 @@ def fill_pairs(
     divisor, multiplier, places = division[0], division[1], division[2]
     scrap = counts.size - 1
     reach = scrap * (divisor // 2)  # twice the distance from zero to the outer edges
-    most = stops_ps.size
+    # A lag is inside when -reach <= 2 lag < reach, that is -least <= lag < most: lags are only
+    # doubled once they are known to be small.
+    least, most = reach // 2, (reach + 1) // 2
+    size = stops_ps.size
     low = 0
     for i in range(starts_ps.size):
-        shift = reach - 2 * starts_ps[i]
+        start = starts_ps[i]
         for _ in range(TWO):
-            low += int(low < most and 2 * stops_ps[np.uint64(low)] + shift < 0)
-        while low < most and 2 * stops_ps[np.uint64(low)] + shift < 0:
+            low += int(low < size and stops_ps[np.uint64(low)] - start < -least)
+        while low < size and stops_ps[np.uint64(low)] - start < -least:
             low += 1
         j = low
-        while j + FOUR <= most:
+        while j + FOUR <= size:
             for g in range(FOUR):
-                twice = 2 * stops_ps[np.uint64(j + g)] + shift
-                k = bin_of(twice, divisor, multiplier, places)
-                counts[k if twice < 2 * reach else np.uint64(scrap)] += 1
+                lag = min(stops_ps[np.uint64(j + g)] - start, most)  # most falls in the last entry
+                counts[bin_of(2 * lag + reach, divisor, multiplier, places)] += 1
             j += FOUR
-            if 2 * stops_ps[np.uint64(j - 1)] + shift >= 2 * reach:
+            if stops_ps[np.uint64(j - 1)] - start >= most:
                 break
         else:
-            while j < most:
-                twice = 2 * stops_ps[np.uint64(j)] + shift
-                if twice >= 2 * reach:
+            while j < size:
+                lag = stops_ps[np.uint64(j)] - start
+                if lag >= most:
                     break
-                counts[bin_of(twice, divisor, multiplier, places)] += 1
+                counts[bin_of(2 * lag + reach, divisor, multiplier, places)] += 1
                 j += 1
 
 

@@ -57,6 +57,8 @@ def test_a_delay_of_whole_bins_shifts_the_histogram(
 def test_times_at_the_end_of_int64_do_not_wrap() -> None:
     late = 106 * 86_400 * 10**12
     assert pairs([late], [late + 100], 100, 2) == [0, 0, 0, 1, 0]
+    assert pairs([0, late], [0, late + 100], 100, 2) == [0, 0, 1, 1, 0]
+    assert pairs([0, late], [late // 2, late // 2 + 5] * 3 + [late], 100, 2) == [0, 0, 1, 0, 0]
 
 
 def test_a_regular_comb_gives_a_triangle() -> None:
