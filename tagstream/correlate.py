@@ -55,8 +55,9 @@ def _counted(
         mine = starts[bounds[i] : bounds[i + 1]]
         if mine.size:
             reach = bins_each_side * bin_ps + bin_ps
-            low = np.searchsorted(stops, mine[0] - reach, side="left")
-            high = np.searchsorted(stops, mine[-1] + reach, side="right")
+            earliest, latest = int(mine[0]) - reach, int(mine[-1]) + reach
+            low = np.searchsorted(stops, np.int64(max(earliest, -(2**63))), side="left")
+            high = np.searchsorted(stops, np.int64(min(latest, 2**63 - 1)), side="right")
             fill_pairs(mine, stops[low:high], division, partial[i])
 
     with ThreadPoolExecutor(workers) as pool:

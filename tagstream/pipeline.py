@@ -100,11 +100,13 @@ class Pipeline:
         return True
 
     def finish(self, state: State, **fields: Any) -> None:
-        """End the last slice and close the sink."""
-        if self._slice is not None:
-            self._end_slice(self._slice)
-        self.sink.event("end", None, **{**self._health(state), **fields})
-        self.sink.close(self._snapshot(state))
+        """End the last slice and close the sink, the second also if the first fails."""
+        try:
+            if self._slice is not None:
+                self._end_slice(self._slice)
+            self.sink.event("end", None, **{**self._health(state), **fields})
+        finally:
+            self.sink.close(self._snapshot(state))
 
     def _first(self) -> Conditioned:
         """The first piece with anything in it. Raises InputError when there is none."""

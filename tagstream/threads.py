@@ -76,7 +76,12 @@ class SinkInThread:
         self._call(lambda: self._sink.event(name, stream_ps, **fields))
 
     def close(self, snapshot: Snapshot) -> None:
-        self._call(self._sink.close, snapshot).result()
+        """Close the other sink whatever was raised before, then raise the first of it."""
+        closed = self._thread.submit(self._sink.close, snapshot)
+        failed = [error for f in (*self._waiting, closed) if (error := f.exception()) is not None]
+        self._waiting.clear()
+        if failed:
+            raise failed[0]
 
     def _call(self, function: Callable[..., Any], *arguments: Any) -> Future[Any]:
         future = self._thread.submit(function, *arguments)

@@ -60,3 +60,9 @@ def test_a_library_of_another_field_agrees_where_the_definitions_do() -> None:
     lags, ours = tagstream.cross_correlation(a, b, 10, 1)
     assert list(theirs.index) == [float(lag) for lag in lags]
     assert np.array_equal(np.rint(rate * a.size), ours)
+
+
+def test_times_at_both_ends_of_int64() -> None:
+    late = np.array([2**63 - 5, 2**63 - 1], np.int64)
+    assert tagstream.cross_correlation(late, late, 100, 1)[1].sum() == 2
+    assert tagstream.cross_correlation(late, late + 0, 100, 1)[1].sum() == 4

@@ -23,6 +23,7 @@ SHARED = {
 }
 # Kernels that tests reach through the class that owns their state, and their twin there.
 THROUGH_THEIR_CLASS = {
+    "later": "naive.judged",
     "fill_plain": "naive.judged",
     "fill_judged": "naive.judged",
     "fill_survivors": "naive.without_dead_time",

@@ -68,7 +68,6 @@ class Conditioner:
         self._counters = Counters()
         self._live_end_ps: int | None = None
         self._last_tag_ps: int | None = None
-        self._latest_ps: int | None = None
         delays = [channel.delay_ps for channel in settings.channels.values()]
         self._least_delay_ps, self._largest_delay_ps = min(delays), max(delays)
         self._dead_times = np.array([c.dead_time_ps for c in settings.channels.values()], np.int64)
@@ -78,13 +77,12 @@ class Conditioner:
         self._judge = Judge(settings, self._counters, self._order)
         self._stretch: Stretch | None = None
         self._vouched_to_ps: int | None = None  # raw end of the last complete interval
+        self._in_progress: tuple[int, int] | None = None  # the interval that is not complete yet
 
     def push(self, piece: Arrivals) -> Conditioned:
         """The blocks that a piece completes."""
         self._counters.arrived += piece.times_ps.size
         blocks = list(self._taken(piece))
-        if piece.times_ps.size:
-            self._latest_ps = int(piece.times_ps[-1])
         return self._state(blocks)
 
     def finish(self) -> Conditioned:
@@ -95,10 +93,13 @@ class Conditioner:
     def _state(self, blocks: list[Block]) -> Conditioned:
         self._counters.in_flight = len(self._order) + self._judge.pending
         counters = replace(self._counters, dropped=dict(self._counters.dropped))
-        return Conditioned(blocks, counters, self._latest_ps, self._live_end_ps, self._last_tag_ps)
+        return Conditioned(
+            blocks, counters, self._judge.latest_ps, self._live_end_ps, self._last_tag_ps
+        )
 
     def _taken(self, piece: Arrivals) -> Iterator[Block]:
         if self._interrupts(piece):
+            self._judge.end()
             yield from self._end_stretch()
         if piece.lossy:
             self._counters.drop("in_gap", piece.times_ps.size)
@@ -116,10 +117,9 @@ class Conditioner:
         vouched = isinstance(self._stretch, VouchedStretch)
         if piece.begin_ps is None:
             return vouched
-        begins_anew = self._vouched_to_ps is not None
-        return not vouched or (
-            begins_anew and self._judge.interval(piece)[0] != self._vouched_to_ps
-        )
+        interval = self._judge.interval(piece)
+        goes_on = interval == self._in_progress or interval[0] == self._vouched_to_ps
+        return not (vouched and goes_on)
 
     def _open_stretch(self, piece: Arrivals) -> None:
         if self._stretch is not None:
@@ -137,7 +137,8 @@ class Conditioner:
             begin, end = self._judge.interval(piece)
             self._vouched_to_ps = end if piece.complete else None
             known_to = begin if known_to is None else max(begin, known_to)
-            known_to = end if piece.complete else known_to
+            known_to = end if piece.complete else min(end, known_to)
+            self._in_progress = None if piece.complete else (begin, end)
         if known_to is not None:
             known_to += self._least_delay_ps
             times, channels = self._order.release(known_to)
@@ -153,7 +154,7 @@ class Conditioner:
         elif self._stretch is not None:
             yield from self._emit(times, channels, TIME_LIMIT_PS)
         self._stretch = None
-        self._vouched_to_ps = None
+        self._vouched_to_ps = self._in_progress = None
 
     def _emit(
         self, times: NDArray[np.int64], channels: NDArray[np.uint8], known_to_ps: int

@@ -47,6 +47,11 @@ class Judge:
         return int(self._state[k.PENDING])
 
     @property
+    def latest_ps(self) -> int | None:
+        """The latest good time so far; None before the first tag."""
+        return int(self._state[k.LATEST]) if self._state[k.STARTED] else None
+
+    @property
     def watermark_ps(self) -> int | None:
         """No good tag will come from before this raw time; None before the first tag."""
         if not self._state[k.STARTED]:
@@ -67,7 +72,7 @@ class Judge:
         interval = self.interval(piece)
         times, inputs = piece.times_ps, piece.inputs
         while True:
-            used = self._run(times, inputs, interval)
+            used = self._run(times, inputs, interval, vouched)
             if self.pending <= k.CONFIRMATIONS:
                 break
             times, inputs = times[used:], inputs[used:]
@@ -76,17 +81,21 @@ class Judge:
             yield from self._confirmed(vouched)
 
     def end(self) -> None:
-        """The feed has ended: what was never confirmed is dropped."""
+        """The stream ends or is interrupted here: what was never confirmed is dropped."""
         self._drop_pending()
 
     def _run(
-        self, times: NDArray[np.int64], inputs: NDArray[Any], interval: tuple[int, int]
+        self,
+        times: NDArray[np.int64],
+        inputs: NDArray[Any],
+        interval: tuple[int, int],
+        vouched: bool,
     ) -> int:
         held = len(self._order)
         out_times, out_channels = self._order.room(times.size)
         counts = np.zeros(k.COUNT_SIZE, np.int64)
         counts[k.KEPT] = held
-        limits = (self._disorder_ps, self._jump_ps, TIME_LIMIT_PS, *interval)
+        limits = (self._disorder_ps, self._jump_ps, TIME_LIMIT_PS, *interval, vouched)
         used = k.fill_judged(
             times,
             inputs,
@@ -123,16 +132,30 @@ class Judge:
         inputs = self._pending_inputs[:count].astype(np.uint16)
         if back:
             next_slice = (int(self._state[k.LATEST]) // self._slice_ps + 1) * self._slice_ps
-            self._state[k.OFFSET] = next_slice - int(times.min())
+            offset = next_slice - int(times.min())
+            if max(abs(offset), next_slice) > TIME_LIMIT_PS:
+                self._drop_pending("overflow")
+                return
+            self._state[k.OFFSET] = offset
         self._state[k.STARTED] = 0
         self._state[k.PENDING] = 0
-        if not vouched:
+        if vouched:
+            self._take_one_by_one(times, inputs)
+        else:
             yield
-        self._run(times, inputs, EVERYWHERE)
+            self._run(times, inputs, EVERYWHERE, vouched)
 
-    def _drop_pending(self) -> None:
-        reason = "late" if self._state[k.PENDING_BACK] else "jump"
-        self._counters.drop(reason, self.pending)
+    def _take_one_by_one(self, times: NDArray[np.int64], inputs: NDArray[np.uint16]) -> None:
+        """Take tags between which long pauses may lie: each is the first of its own time."""
+        latest = int(times.max()) + int(self._state[k.OFFSET])
+        for i in range(times.size):
+            self._state[k.STARTED] = 0
+            self._run(times[i : i + 1], inputs[i : i + 1], EVERYWHERE, vouched=True)
+        self._state[k.LATEST] = latest
+
+    def _drop_pending(self, reason: str | None = None) -> None:
+        far = "late" if self._state[k.PENDING_BACK] else "jump"
+        self._counters.drop(reason or far, self.pending)
         self._state[k.PENDING] = 0
 
 

@@ -25,6 +25,12 @@ UNLISTED_INPUT = 255  # entry of the table of channels for an input without a ch
 
 
 @kernel
+def later(time_ps: int, by_ps: int, limit_ps: int) -> int:
+    """time + by, but not past the limit: the sum could leave int64."""
+    return time_ps + by_ps if time_ps < limit_ps - by_ps else limit_ps
+
+
+@kernel
 def fill_plain(
     times_ps: NDArray[np.int64],
     inputs: NDArray[Any],
@@ -44,8 +50,10 @@ def fill_plain(
     """
     disorder, jump, limit = rules[0], rules[1], rules[2]
     offset = state[2]
-    begin = max(rules[3], -limit) - offset
-    end = min(rules[4], limit + 1) - offset
+    # Raw times, bounded so that no sum or difference leaves int64.
+    begin, end = max(rules[3], -limit), min(rules[4], limit + 1)
+    begin = begin - offset if offset <= 0 or begin >= offset - limit else -limit
+    end = end - offset if offset >= 0 or end <= limit + offset else limit + 1
     latest = state[0] - offset
     largest, kept, unlisted, unordered = state[6], counts[0], counts[5], counts[6]
     last = out_times[np.uint64(kept - 1)] if kept > 0 else -limit - limit // 256
@@ -53,11 +61,10 @@ def fill_plain(
     size = times_ps.size
     while i < size:
         t = times_ps[np.uint64(i)]
-        ahead = t - latest
-        if ahead > jump or ahead < -disorder or t < begin or t >= end:
+        if t > later(latest, jump, limit) or t < latest - disorder or t < begin or t >= end:
             break
+        largest = max(largest, latest - t)
         latest = max(latest, t)
-        largest = max(largest, -ahead)
         channel = channel_of[inputs[np.uint64(i)]]
         listed = channel != UNLISTED_INPUT
         moved = t + offset + delays_ps[channel]
@@ -90,7 +97,7 @@ def fill_judged(
     """Judge tags in arrival order; the good ones get their channel and delay.
 
     times_ps, inputs: n tags in arrival order. rules: int64 [max_disorder, max_jump, limit,
-    begin, end] in ps, the interval being that of which the source vouches (or the whole range).
+    begin, end] in ps and 1 if a source vouches for the interval (else it is the whole range).
     channel_of: uint8, one entry for each value that the type of `inputs` can have,
     UNLISTED_INPUT for none. delays_ps: int64, 256, by channel. state: int64 (STATE_SIZE),
     carried from call to call. pending_*: int64 (CONFIRMATIONS + 1), tags that are far from all
@@ -102,13 +109,16 @@ def fill_judged(
     A tag is late when it lies more than max_disorder before the latest one so far. A tag more
     than max_jump ahead of the latest, or more than max_jump before it, is held; it is believed
     when the next CONFIRMATIONS tags agree with it, and dropped when one agrees with the old
-    time. What happens to a tag depends on the tags before it alone.
+    time. Where a source vouches for the interval a long pause is no fault, so there a tag agrees
+    if only it is not before the held ones. What happens to a tag depends on the tags before it
+    alone.
 
     Returns the number of tags consumed: n, or fewer when a jump was just confirmed; then the
     caller must end what came before and judge the pending tags again under a new state.
     Cost: one pass.
     """
     disorder, jump, limit, begin, end = rules[0], rules[1], rules[2], rules[3], rules[4]
+    vouched = rules[5] == 1
     i = 0
     size = times_ps.size
     while i < size:
@@ -127,23 +137,25 @@ def fill_judged(
             )
             if i == size:
                 break
-        t = times_ps[i]
-        if t > limit or t < -limit:
+        t, offset = times_ps[i], state[2]
+        beyond = t > limit or t < -limit
+        if beyond or (offset > 0 and t > limit - offset) or (offset < 0 and t < -limit - offset):
             counts[3] += 1
             i += 1
             continue
-        t += state[2]
-        if t > limit or t < begin or t >= end:
-            counts[3 if t > limit else 4] += 1
+        t += offset
+        if t < begin or t >= end:
+            counts[4] += 1
             i += 1
             continue
         if state[1] == 0:
             state[0], state[1] = t, 1
             if state[3] == 0:
                 continue  # the first tag is plain by its own measure
-        far = abs(t - state[0]) > jump
+        far = t > later(state[0], jump, limit) or t < state[0] - jump
         if state[3] > 0:
-            if far and t >= state[4] - disorder and t - state[4] <= jump:
+            near = t >= state[4] - disorder and (vouched or t <= later(state[4], jump, limit))
+            if far and near:
                 pending_times[state[3]] = times_ps[i]
                 pending_inputs[state[3]] = np.int64(inputs[i])
                 state[3] += 1
@@ -267,7 +279,7 @@ def warm_up() -> None:
     """Compile every kernel here, or load it, for the types that a run uses."""
     times, channels = np.arange(4, dtype=np.int64), np.zeros(4, np.uint8)
     delays, state = np.zeros(256, np.int64), np.zeros(STATE_SIZE, np.int64)
-    rules = np.array([10, 100, 1 << 62, 0, 1 << 61], np.int64)
+    rules = np.array([10, 100, 1 << 61, 0, 1 << 60, 0], np.int64)
     pending = np.zeros((2, CONFIRMATIONS + 1), np.int64)
     for inputs in (channels, channels.astype(np.uint16)):
         fill_judged(

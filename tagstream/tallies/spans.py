@@ -78,7 +78,8 @@ class _Window:
             self._subtract(self._parts.popleft()[1])
         same_part = bool(self._parts) and self._parts[-1][0] == part
         before = self._parts.pop()[1] if same_part else {}
-        merged = {name: added(before.get(name), more) for name, more in sums.items()}
+        wide = {name: _wide(sums) for name, sums in before.items()}
+        merged = {name: added(wide.get(name), more) for name, more in sums.items()}
         self._parts.append((part, {name: _narrow(more) for name, more in merged.items()}))
         for name, more in sums.items():
             self._totals[name] = added(self._totals.get(name), _integers(more))
@@ -106,10 +107,21 @@ def _integers(sums: Sums) -> dict[str, NDArray[Any]]:
 
 
 def _narrow(sums: Sums) -> dict[str, NDArray[Any]]:
-    """Arrays of counts in the narrowest unsigned type that holds them."""
+    """Arrays of integers in the narrowest unsigned type of at most 32 bits that holds them.
+
+    Never 64 bits: an unsigned and a signed integer of 64 bits add up to floating point.
+    """
     return {
         key: value.astype(np.min_scalar_type(value.max()))
-        if value.ndim and value.dtype.kind != "f"
+        if value.ndim and value.dtype.kind != "f" and value.max() < 2**32
         else value
+        for key, value in sums.items()
+    }
+
+
+def _wide(sums: Sums) -> dict[str, NDArray[Any]]:
+    """The same as int64, to be added to."""
+    return {
+        key: value if value.dtype.kind == "f" else value.astype(np.int64)
         for key, value in sums.items()
     }

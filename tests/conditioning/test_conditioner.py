@@ -223,3 +223,67 @@ def test_a_gap_keeps_the_dead_time(gap: bool) -> None:
     pieces = [arrivals([(0, 0), (10, 0)]), arrivals([(12, 0), (20, 0)], gap_before=gap)]
     _, kept, _ = conditioned(pieces, dead_times=[5, 0, 0])
     assert kept == [(0, 0), (10, 0), (20, 0)]
+
+
+def test_a_source_that_starts_again_after_days_goes_on() -> None:
+    days = 100 * 86_400 * S
+    first, again = [(days + i, 0) for i in range(20)], [(i, 0) for i in range(20)]
+    blocks, kept, _ = conditioned([arrivals(first + again)])
+    assert len(kept) == 40
+    assert live(blocks)[1][0] > days
+    for base in (-days, 2 * days // 3):
+        _, kept, counters = conditioned(
+            [
+                arrivals([(days // 2 + i, 0) for i in range(20)]),
+                arrivals([(base + i, 0) for i in range(20)]),
+            ]
+        )
+        assert len(kept) + sum(counters.dropped.values()) == 40
+
+
+def test_starting_again_and_again_ends_at_the_limit_not_in_a_loop() -> None:
+    events = [(20 * S * (i // 17 % 2) + i % 17, 0) for i in range(17 * 400)]
+    _, kept, counters = conditioned([arrivals(events)])
+    assert len(kept) + sum(counters.dropped.values()) == len(events)
+
+
+def test_sparse_light_in_a_vouched_interval_is_all_kept() -> None:
+    events = [(20 * S * i, 0) for i in range(60)]
+    whole = arrivals(events, begin_ps=0, end_ps=1_300 * S)
+    assert conditioned([whole])[1] == events
+    parts = [
+        arrivals(events[i : i + 7], begin_ps=0, end_ps=1_300 * S, complete=i >= 53)
+        for i in range(0, 60, 7)
+    ]
+    assert conditioned(parts)[1] == events
+
+
+def test_a_gap_among_unconfirmed_tags_is_a_gap() -> None:
+    pieces = [
+        arrivals([(i, 0) for i in range(3)] + [(100 * S + i, 0) for i in range(8)]),
+        arrivals([(101 * S + i, 0) for i in range(20)], gap_before=True),
+    ]
+    blocks, kept, counters = conditioned(pieces)
+    assert counters.dropped["jump"] == 8
+    assert live(blocks) == [(1, 3), (101 * S + 1, 101 * S + 20)]
+    assert len(kept) == 23
+
+
+def test_live_time_never_passes_the_vouched_end() -> None:
+    pieces = [
+        arrivals([(5_000, 0), (9_000, 0)]),
+        arrivals([(100, 0)], begin_ps=50, end_ps=400, complete=False),
+        arrivals([(200, 0)], begin_ps=50, end_ps=400),
+    ]
+    blocks, _, _ = conditioned(pieces)
+    assert max(end for _, end in live(blocks)) <= 9_001
+
+
+def test_an_interval_that_follows_an_incomplete_one_is_a_gap() -> None:
+    pieces = [
+        arrivals([(1, 0), (5, 0)], begin_ps=0, end_ps=10, complete=False),
+        arrivals([(25, 0)], begin_ps=20, end_ps=30),
+    ]
+    blocks, _, counters = conditioned(pieces, max_disorder="0 ps")
+    assert live(blocks) == [(0, 5), (20, 30)]
+    assert counters.gaps == 1

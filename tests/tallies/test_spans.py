@@ -21,6 +21,7 @@ def slice_sums(value: int) -> dict[str, dict[str, np.ndarray]]:
         "t": {
             "counts": edge * 300,
             "pair_time_ps": edge + 10 if value % 3 == 0 else np.array(10, np.int64),
+            "period_sum_ps": edge * 10**12,
             "expected_pairs": np.array(0.1 * value),
         }
     }
@@ -42,6 +43,9 @@ def test_every_span_is_the_sum_of_its_slices(steps: list[tuple[int, int]]) -> No
             ]
             held = span.sums["t"]
             assert list(held["counts"]) == np.sum([s["counts"] for s in inside], axis=0).tolist()
+            assert held["period_sum_ps"].dtype == np.int64
+            sums = np.sum([s["period_sum_ps"] for s in inside], axis=0)
+            assert list(held["period_sum_ps"]) == sums.tolist()
             total = sum(s["pair_time_ps"] for s in inside)
             assert np.array_equal(
                 np.broadcast_to(held["pair_time_ps"], 3), np.broadcast_to(total, 3)
