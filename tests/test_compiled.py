@@ -65,6 +65,10 @@ def test_folders_of_other_sources_go_once_they_are_a_day_old(tmp_path: Path) -> 
     assert young.exists()
 
 
+# Loaded within the kernels that call them.
+CALLED_BY_KERNELS = ("later", "fill_plain", "bin_of")
+
+
 def test_a_run_compiles_nothing_after_it_was_warmed() -> None:
     from tagstream.conditioning import kernels as conditioning
     from tagstream.tallies import kernels as tallies
@@ -75,7 +79,7 @@ def test_a_run_compiles_nothing_after_it_was_warmed() -> None:
         name: len(made.signatures)
         for module in (conditioning, tallies)
         for name, made in vars(module).items()
-        if hasattr(made, "signatures")
+        if hasattr(made, "signatures") and name not in CALLED_BY_KERNELS
     }
     assert {name for name in before if name.startswith("fill_")} >= {"fill_judged", "fill_pairs"}
     assert all(before.values()), before
