@@ -24,8 +24,9 @@ Interval = Literal["two-sided", "upper-limit", "none"]
 class Estimate:
     """A number with its interval, what it was made from and how.
 
-    interval: "two-sided"; "upper-limit" when no counts were found (lower is 0, upper a one-sided
-        limit at `level`); "none" when there is no number, and then `reason` says why.
+    interval: "two-sided"; "upper-limit" when no counts were found (lower is the value, 0 before
+        corrections, upper a one-sided limit at `level`); "none" when there is no number, and then
+        `reason` says why.
     counts: the counts that the number rests on.
     raw_value, raw_lower, raw_upper: before the corrections that `method` names; equal to the
         value where there are none.

@@ -2,13 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from fractions import Fraction
 from typing import Any
 
 from tagstream.estimates import Estimate, Estimator, no_estimate
 from tagstream.estimates.intervals import Bounds, poisson_interval
-from tagstream.estimates.normalisation import NO_PAIRS, expected_pairs, expected_within
+from tagstream.estimates.normalisation import (
+    NO_PAIRS,
+    ONE_CHANNEL_NOTE,
+    distinct_pairs,
+    expected_pairs,
+    expected_within,
+    is_one_channel,
+)
 from tagstream.settings.measures import CrossCorrelation
 from tagstream.settings.measures import G2Zero as G2ZeroSettings
 from tagstream.tallies import Sums
@@ -23,8 +30,9 @@ class G2Zero(Estimator):
     m/2 - 1 and is centred half a bin before zero, which `method` then says.
 
     With a signal fraction rho = S / (S + B), g2 = (C - (1 - rho^2)) / rho^2 takes uncorrelated
-    background out of the measured C (Brouri et al., Opt. Lett. 25, 1294 (2000)). Nothing is
-    clipped: a value below zero is shown, with a note.
+    background out of the measured C (Brouri et al., Opt. Lett. 25, 1294 (2000)). rho is taken as
+    exact: its own uncertainty is not in the interval. Nothing is clipped: a value below zero is
+    shown, and a note says whether counting noise explains it.
     """
 
     unit = "1"
@@ -48,13 +56,14 @@ class G2Zero(Estimator):
         expected = expected_within(pairs, self._first, self._width)
         if expected <= 0:
             return no_estimate(NO_PAIRS, level=level, method=self._method, unit=self.unit)
+        if is_one_channel(self._tally):
+            counts, expected = distinct_pairs(counts, expected)
         raw = poisson_interval(counts, level, self._settings.interval).times(1 / expected)
         return self._corrected(counts, counts / expected, raw)
 
     def _corrected(self, counts: int, measured: float, raw: Bounds) -> Estimate:
         square = (self._settings.signal_fraction or 1.0) ** 2
         value, lower, upper = ((c - (1 - square)) / square for c in (measured, *raw[:2]))
-        note = "below zero: more background was removed than was measured" if value < 0 else ""
         return Estimate(
             value,
             lower,
@@ -67,8 +76,16 @@ class G2Zero(Estimator):
             raw_value=measured,
             raw_lower=raw.lower,
             raw_upper=raw.upper,
-            note=note,
+            note="; ".join(self._notes(value, upper)),
         )
+
+    def _notes(self, value: float, upper: float) -> Iterator[str]:
+        if is_one_channel(self._tally):
+            yield ONE_CHANNEL_NOTE
+        if upper < 0:
+            yield "below zero by more than counting noise: is signal_fraction too low?"
+        elif value < 0:
+            yield "below zero, within counting noise"
 
 
 def _method(settings: G2ZeroSettings, tally: CrossCorrelation, width: int) -> str:

@@ -12,7 +12,12 @@ import numpy as np
 from tagstream.estimates import Estimate, Estimator, no_estimate
 from tagstream.estimates import peak_checks as checks
 from tagstream.estimates.intervals import ratio_interval
-from tagstream.estimates.normalisation import NO_PAIRS, expected_pairs
+from tagstream.estimates.normalisation import (
+    NO_PAIRS,
+    ONE_CHANNEL_NOTE,
+    expected_pairs,
+    is_one_channel,
+)
 from tagstream.estimates.peaks import Comb, PulsedHistogram
 from tagstream.settings.measures import CrossCorrelation
 from tagstream.settings.measures import G2ZeroPulsed as G2ZeroPulsedSettings
@@ -33,7 +38,8 @@ class G2ZeroPulsed(Estimator):
 
     Which side peaks are a fair reference is the user's choice: near ones are high when the
     emitter blinks or detectors are dead for several pulses. The note tells when they are not
-    flat (near against far half, p below 0.003) and when peaks overlap (valley above 1 %).
+    flat (near against far half, p below 0.003), when peaks overlap (valley above 1 %, or enough
+    to add 0.02) and when whole bins place the windows unlike each other (by a tenth of them).
     """
 
     unit = "1"
@@ -70,12 +76,21 @@ class G2ZeroPulsed(Estimator):
             return self._none(f"no side peak in range: max_lag of at least {need} is needed")
         found = sums[self._tally.name]
         expected = expected_pairs(found, self._tally)
-        peaks = PulsedHistogram(found["counts"], expected, comb, self._width, sides)
+        one_channel = is_one_channel(self._tally)
+        peaks = PulsedHistogram(
+            found["counts"], expected, comb, self._width, sides, one_channel=one_channel
+        )
         if not (peaks.central[1] > 0 and peaks.reference[1].sum() > 0):
             return self._none(NO_PAIRS)
         if peaks.reference[0].sum() == 0:
             return self._none("no counts in the side peaks")
-        notes = (clock_note, checks.flatness_note(peaks), checks.overlap_note(peaks))
+        notes = (
+            ONE_CHANNEL_NOTE if one_channel else "",
+            clock_note,
+            checks.placing_note(peaks),
+            checks.flatness_note(peaks),
+            checks.overlap_note(peaks),
+        )
         estimate = self._ratio(peaks, method, "; ".join(note for note in notes if note))
         return replace(estimate, profile=self._profile(peaks)) if profile else estimate
 
@@ -121,16 +136,16 @@ class G2ZeroPulsed(Estimator):
         period = Fraction(int(singles["period_sum_ps"][self._clock]), intervals)
         if not missed:
             return period, ""
-        note = (
-            f"{missed} of {intervals} clock intervals are too long: tags of the clock are missing"
-        )
-        return period, note
+        note = f"{missed} of {intervals} clock intervals are too long: tags are missing"
+        return period, f"{note}, the period is off by some {100 * missed / intervals:.2g} %"
 
     def _layout(self, period_ps: Fraction) -> tuple[Comb, list[int], str]:
         """Where the peaks are, which sides are used, and the method; kept while nothing changes."""
         comb = Comb(self._tally.bin_ps, self._tally.bins_each_side, period_ps)
         if self._found is None or self._found[0] != comb:
             sides = comb.sides(self._width, *self._settings.peak_range)
+            if is_one_channel(self._tally):
+                sides = [p for p in sides if p > 0]
             self._found = comb, sides, self._method(period_ps, sides)
         return self._found
 

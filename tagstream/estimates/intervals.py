@@ -1,11 +1,16 @@
 """Intervals for counts: Poisson, binomial, and the ratio of two Poisson means.
 
-Two kinds. "exact" inverts the tail probabilities and never covers less than it says: Garwood,
-Biometrika 28, 437 (1936) for a Poisson mean, Clopper and Pearson, Biometrika 26, 404 (1934) for
-a binomial probability. At few counts it covers much more. "mid-p" counts the observed value
-itself by half in each tail (Lancaster, J. Am. Stat. Assoc. 56, 223 (1961)); its coverage is
-right on average. No counts give a one-sided limit at the full level, exact in both kinds (the
-mid-p equation gives the same number).
+Two kinds. "exact" inverts the tail probabilities: Garwood, Biometrika 28, 437 (1936) for a
+Poisson mean, Clopper and Pearson, Biometrika 26, 404 (1934) for a binomial probability. At few
+counts it covers much more than it says. "mid-p" counts the observed value itself by half in each
+tail (Lancaster, J. Am. Stat. Assoc. 56, 223 (1961)); its coverage is right on average.
+
+No counts give a one-sided limit at the full level, in both kinds (the mid-p equation gives the
+same number). As a limit it is exact. But one that turns two-sided with the first count has a
+price (Feldman and Cousins, Phys. Rev. D 57, 3873 (1998)): "exact" never covers less than it says
+except where the mean lies between -ln(1 - level) and -ln((1 - level) / 2). At 68.27 % these are
+1.15 and 1.84, and the least is 0.57; at 95 % they are 3.00 and 3.69, and the least is 0.938.
+`garwood`, two-sided at zero counts too, has no such place.
 
 Only scipy.special is used, imported when first needed: it takes a third of a second. Upper
 bounds are solved from the upper tail, so that nothing is lost where 1 - level is tiny.

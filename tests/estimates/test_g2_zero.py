@@ -7,18 +7,7 @@ from math import sqrt
 import numpy as np
 import pytest
 
-from tagstream.estimates.curves import g2_curves
-from tagstream.estimates.normalisation import expected_pairs
-from tests.estimates.made import S, estimator, sums, tally
-
-
-def counts(**at: int) -> np.ndarray:
-    """201 bins of 1 ns; `zero`, `plus_1`, `minus_1` and so on set single ones."""
-    made = np.zeros(201, np.int64)
-    for name, value in at.items():
-        sign, _, number = name.partition("_")
-        made[100 + {"zero": 0, "plus": 1, "minus": -1}[sign] * int(number or 0)] = value
-    return made
+from tests.estimates.made import S, counts, estimator, sums, tally
 
 
 def test_one_bin_by_default() -> None:
@@ -118,65 +107,3 @@ def test_coverage_on_drawn_counts(means: tuple[float, float], level: float) -> N
     assert held >= level - slack
     if means[0] > 10:
         assert held <= level + slack
-
-
-def test_slices_allow_for_drift_and_totals_do_not() -> None:
-    # Independent light whose rate scans tenfold: slice by slice it is 1, from totals 1.41; a sine
-    # of 20 % gives 1.02 (for the sine 1 + 0.2^2 / 2; for a linear scan <n^2>/<n>^2).
-    for rates, biased in (
-        (np.linspace(1, 10, 1_001), 1.22),
-        (10 ** np.linspace(0, 1, 1_001), 1.41),
-        (1 + 0.2 * np.sin(np.linspace(0, 20 * np.pi, 1_000, endpoint=False)), 1.02),
-    ):
-        n = rates * 1e5
-        slices = n * n * 1_000 / S  # expected pairs of each slice of 1 s, bins of 1 ns
-        total = int(n.sum())
-        made = sums(
-            np.full(201, round(slices.sum())),
-            slices.sum(),
-            singles=(total, total, 0),
-            live_time_ps=n.size * S,
-            pair_time_ps=n.size * S,
-        )
-        fair = estimator(tally(), kind="g2-zero")(made)
-        assert fair.value == pytest.approx(1, abs=1e-3)
-        unfair = estimator(tally(normalisation="global"), kind="g2-zero")(made)
-        assert unfair.value == pytest.approx(biased, abs=0.015)
-        assert "normalised by global" in unfair.method
-
-
-def test_pair_time_takes_out_the_loss_at_edges() -> None:
-    # |lag| = 1/4 of the live time: uncorrected 0.75, corrected 1, with T in the numerator 0.56.
-    live, rate = 4_000_000, 1e-3
-    pair_time = live - np.abs(np.arange(-100, 101)) * 10_000
-    n = int(live * rate)
-    made = sums(
-        np.rint(n * n * 1_000 * pair_time / live**2 * 1e3),
-        singles=(n, n, 0),
-        live_time_ps=live,
-        pair_time_ps=pair_time,
-    )["hbt"]
-    fair = expected_pairs(made, tally(normalisation="global"))
-    assert made["counts"] / fair / 1e3 == pytest.approx(np.ones(201), abs=1e-3)
-    uncorrected = made["counts"] / (n * n * 1_000 / live) / 1e3
-    assert uncorrected[0] == pytest.approx(0.75, abs=1e-3)
-
-
-def test_one_channel_from_totals_leaves_each_tag_out_once() -> None:
-    one = tally(stop="a", normalisation="global")
-    made = sums(counts(), singles=(10, 10, 0))["hbt"]
-    assert float(expected_pairs(made, one)) == pytest.approx(10 * 9 * 1_000 / S)
-
-
-def test_curves() -> None:
-    made = sums(counts(zero=9, plus_1=100), 50.0)["hbt"]
-    found = g2_curves(made, tally())
-    assert found["g2"][100] == pytest.approx(0.18)
-    # Garwood 68.27 % on 9 counts.
-    assert found["g2_lower"][100] * 50 == pytest.approx(6.056, abs=1e-3)
-    assert found["g2_upper"][100] * 50 == pytest.approx(13.110, abs=1e-3)
-    assert found["g2_errors"][100] == pytest.approx((13.110 - 6.056) / 100, abs=1e-4)
-    assert found["g2_errors"][0] > 0  # no counts still have an uncertainty
-    assert found["expected_pairs"].shape == (201,)
-    empty = g2_curves(sums(counts(), 0.0)["hbt"], tally())
-    assert np.isnan(empty["g2"]).all()
