@@ -137,7 +137,7 @@ class G2ZeroPulsed(Estimator):
         if not missed:
             return period, ""
         note = f"{missed} of {intervals} clock intervals are too long: tags are missing"
-        return period, f"{note}, the period is off by some {100 * missed / intervals:.2g} %"
+        return period, f"{note}, the period may be off by some {100 * missed / intervals:.2g} %"
 
     def _layout(self, period_ps: Fraction) -> tuple[Comb, list[int], str]:
         """Where the peaks are, which sides are used, and the method; kept while nothing changes."""

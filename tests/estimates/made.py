@@ -80,13 +80,19 @@ def comb_counts(
 
 
 def exponential_comb(
-    lifetime_ps: float, central: float, total: float, bin_ps: int = 100, bins: int = 1_000
+    lifetime_ps: float,
+    central: float,
+    total: float,
+    *,
+    bin_ps: int = 100,
+    bins: int = 1_000,
+    period_ps: int = PERIOD,
 ) -> NDArray[np.int64]:
     """Expected counts of two-sided exponential peaks (a decay against a decay), rounded."""
     edges = (np.arange(-bins, bins + 2) - 0.5) * bin_ps
     made = np.zeros(2 * bins + 1)
     for number in range(-60, 61):
-        x = edges - number * PERIOD
+        x = edges - number * period_ps
         below = np.where(
             x < 0, np.exp(-np.abs(x) / lifetime_ps) / 2, 1 - np.exp(-np.abs(x) / lifetime_ps) / 2
         )

@@ -107,3 +107,39 @@ def test_coverage_on_drawn_counts(means: tuple[float, float], level: float) -> N
     assert held >= level - slack
     if means[0] > 10:
         assert held <= level + slack
+
+
+def test_below_zero_beyond_noise_doubts_the_signal_fraction() -> None:
+    chosen = estimator(tally(), kind="g2-zero", signal_fraction=0.9)
+    # 0.19 of 10 000 pairs are background: 1880 are one standard deviation too few, 1500 are nine.
+    assert chosen(sums(counts(zero=1_880), 10_000.0)).note == "below zero, within counting noise"
+    assert "is signal_fraction too low?" in chosen(sums(counts(zero=1_500), 10_000.0)).note
+    nothing = chosen(sums(counts(), 100.0))
+    assert nothing.interval == "upper-limit"
+    assert nothing.lower == nothing.value == pytest.approx(-0.19 / 0.81)
+
+
+@pytest.mark.parametrize("level", [0.6827, 0.95])
+def test_one_channel_with_itself_counts_each_pair_once(level: float) -> None:
+    # Tags of a Poisson process; of the ordered pairs within the window both orders are counted.
+    rng = np.random.default_rng(17)
+    live, window, runs, held = 10**9, 2_000_001, 1_500, 0
+    chosen = estimator(
+        tally("2000001 ps", "2000001 ps", stop="a", normalisation="global"),
+        kind="g2-zero",
+        level=level,
+    )
+    for _ in range(runs):
+        times = np.sort(rng.integers(0, live, rng.poisson(200)))
+        near = np.searchsorted(times, times + window // 2, "right") - np.arange(times.size) - 1
+        made = sums(
+            [0, 2 * int(near.sum()), 0],
+            singles=(times.size, times.size, 0),
+            live_time_ps=live,
+            pair_time_ps=live - window // 4,  # the mean over the bin
+        )
+        found = chosen(made)
+        assert found.counts == near.sum()
+        held += found.lower <= 1 <= found.upper
+    assert "one channel with itself" in found.note
+    assert abs(held / runs - level) < 3 * sqrt(level * (1 - level) / runs)

@@ -111,10 +111,8 @@ def test_the_period_from_a_clock() -> None:
     found = chosen(made)
     assert found.value == pytest.approx(0.1)
     assert "measured from clock, 12.5006 ns" in found.method
-    assert (
-        found.note
-        == "1 of 5 clock intervals are too long: tags are missing, the period is off by some 20 %"
-    )
+    assert found.note.startswith("1 of 5 clock intervals are too long: tags are missing")
+    assert found.note.endswith("the period may be off by some 20 %")
     found = chosen(sums(comb_counts({0: 1}), periods=(0, 0, 0)))
     assert found.interval == "none"
     assert "clock" in found.reason

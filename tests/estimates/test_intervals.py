@@ -245,3 +245,54 @@ def test_mid_p_covers_as_promised_on_average_and_exact_never_less() -> None:
     assert more == pytest.approx(0.69, abs=0.01)
     exact = [coverage(m, 0.6827, "exact") for m in np.arange(2.5, 10, 0.05)]
     assert min(exact) > 0.6827
+
+
+@pytest.mark.parametrize(
+    ("level", "least", "worst"), [(0.6827, 0.574, 1.1479), (0.95, 0.938, 2.9958)]
+)
+def test_the_limit_at_zero_counts_costs_coverage_in_one_place(
+    level: float, least: float, worst: float
+) -> None:
+    # Two-sided with counts, one-sided without: the price of deciding after the count is seen
+    # (Feldman and Cousins, Phys. Rev. D 57, 3873 (1998), sec. III). Just above -ln(1 - level) zero
+    # counts no longer hold the mean; from -ln((1 - level) / 2) on "exact" keeps its word again.
+    gap = -log(1 - level), -log((1 - level) / 2)
+    assert gap[0] == pytest.approx(worst, abs=2e-4)
+    assert coverage(gap[0] + 1e-6, level, "exact") == pytest.approx(least, abs=1e-3)
+    inside = [coverage(m, level, "exact") for m in np.linspace(gap[0] + 1e-6, gap[1], 60)]
+    assert min(inside) == inside[0]
+    outside = [*np.linspace(0.01, gap[0] - 1e-6, 100), *np.linspace(gap[1] + 1e-6, 15, 400)]
+    assert min(coverage(m, level, "exact") for m in outside) >= level
+
+
+def test_bins_of_histograms_cover_at_every_mean() -> None:
+    # Two-sided also at zero counts; 0.72 to 0.92 for means of 0.5 to 10 (summed Poisson laws).
+    lower, upper = garwood(np.arange(60), 0.6827)
+    means = np.linspace(0.5, 10, 400)
+    held = [
+        float(stats.poisson.pmf(np.flatnonzero((lower <= m) & (m <= upper)), m).sum())
+        for m in means
+    ]
+    assert 0.6827 < min(held) < 0.73
+    assert 0.9 < max(held) < 0.98
+
+
+@given(st.integers(0, 200), st.integers(1, 200), LEVELS, st.sampled_from(["mid-p", "exact"]))
+def test_a_ratio_rises_with_its_count(count: int, reference: int, level: float, kind: Kind) -> None:
+    found = ratio_interval(count, reference, 2.0, level, kind)
+    more = ratio_interval(count + 1, reference, 2.0, level, kind)
+    assert found.lower < more.lower
+    assert found.upper < more.upper
+    assert found.lower <= 2 * count / reference <= found.upper
+    exact = ratio_interval(count, reference, 2.0, level, "exact")
+    slack = 1 + 1e-9
+    assert exact.lower <= found.lower * slack
+    assert found.upper <= exact.upper * slack
+
+
+def test_ratios_of_a_million_million_counts_follow_the_normal_law() -> None:
+    n = 10**12
+    for kind in ("mid-p", "exact"):
+        found = ratio_interval(n, n, 1.0, ONE_SIGMA, kind)
+        assert found.upper - 1 == pytest.approx((2 / n) ** 0.5, rel=1e-4)
+        assert 1 - found.lower == pytest.approx((2 / n) ** 0.5, rel=1e-4)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from tagstream.estimates.normalisation import expected_pairs
+from tagstream.estimates.normalisation import distinct_pairs, expected_pairs, expected_within
 from tests.estimates.made import S, counts, estimator, sums, tally
 
 
@@ -55,3 +55,47 @@ def test_one_channel_from_totals_leaves_each_tag_out_once() -> None:
     one = tally(stop="a", normalisation="global")
     made = sums(counts(), singles=(10, 10, 0))["hbt"]
     assert float(expected_pairs(made, one)) == pytest.approx(10 * 9 * 1_000 / S)
+
+
+def test_poisson_light_at_three_quarters_of_pair_time_is_one() -> None:
+    # N T^2 / (N_start N_stop bin P): with T in the numerator alone the loss would count twice.
+    live, rate, bin_ps = 400 * S, 5e5, 1_000
+    n = int(live * rate / S)
+    for pair_time in (live, live // 4 * 3):
+        pairs = round(rate / S * rate / S * bin_ps * pair_time)
+        made = sums(
+            np.full(201, pairs),
+            singles=(n, n, 0),
+            live_time_ps=live,
+            pair_time_ps=pair_time,
+        )
+        found = estimator(tally(normalisation="global"), kind="g2-zero")(made)
+        assert found.value == pytest.approx(1, abs=1e-4)
+
+
+def test_products_of_huge_counts_do_not_wrap() -> None:
+    n, live = 4 * 10**12, 10**18  # their product passes 2^63 many times
+    made = sums(counts(), singles=(n, n, 0), live_time_ps=live, pair_time_ps=live)["hbt"]
+    found = float(expected_pairs(made, tally(normalisation="global")))
+    assert found == pytest.approx(1.6e25 * 1_000 / 1e18, rel=1e-12)
+
+
+def test_without_live_time_no_pairs_are_expected() -> None:
+    made = sums(counts(), live_time_ps=0, pair_time_ps=np.zeros(201, np.int64))["hbt"]
+    found = expected_pairs(made, tally(normalisation="global"))
+    assert found.shape == (201,)
+    assert not found.any()
+    assert expected_within(found, 99, 3) == 0
+
+
+def test_one_channel_with_one_tag_expects_nothing() -> None:
+    for number in (0, 1):
+        made = sums(counts(), singles=(number, number, 0))["hbt"]
+        assert expected_pairs(made, tally(stop="a", normalisation="global")) == 0
+
+
+def test_within_a_window_like_bins_and_unlike_bins_add_up() -> None:
+    assert expected_within(np.array(2.5), 10, 4) == 10
+    assert expected_within(np.arange(20.0), 3, 4) == 3 + 4 + 5 + 6
+    assert distinct_pairs(8, 6.0) == (4, 3.0)
+    assert distinct_pairs(7, 6.0) == (4, 3.0)
