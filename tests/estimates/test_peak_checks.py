@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from tagstream.estimates.intervals import ratio_interval
 from tests.estimates.made import comb_counts, estimator, exponential_comb, pulsed, sums, tally
 
 
@@ -155,8 +156,8 @@ def test_one_channel_with_itself_weighs_each_pair_once() -> None:
     assert found.value == pytest.approx(0.16)
     assert found.counts == 40
     # 40 pairs against the 4 x 500 above zero lag, whose mirror images add nothing.
-    width = (found.upper - found.lower) / 2
-    assert width == pytest.approx(0.16 * (1 / 40 + 1 / 2_000) ** 0.5, rel=0.02)
+    bounds = ratio_interval(40, 2_000, 8.0, 0.6827)
+    assert (found.lower, found.upper) == pytest.approx(bounds[:2], rel=1e-12)
     assert found.profile["peak_counts"][9] == 40
     assert found.profile["window_value"][-1] == pytest.approx(0.16)
     two = estimator(tally("500 ps", "125 ns"), **table)(sums(comb_counts(areas)))
@@ -181,3 +182,27 @@ def test_arrays_of_the_window_scan() -> None:
     assert profile["window_value"] == pytest.approx(np.full(8, 0.1))
     assert (profile["window_lower"] < 0.1).all()
     assert (profile["window_upper"] > 0.1).all()
+
+
+def test_the_window_scan_ends_at_the_period() -> None:
+    counts = comb_counts({0: 50, **{n: 500 for n in range(-9, 10) if n}})
+    widths = pulsed(counts, window="12.5 ns").profile["window_width_ps"] / 500
+    assert list(widths) == [6, 12, 18, 25]
+
+
+@pytest.mark.parametrize(("height", "told"), [(0.008, False), (0.013, True)])
+def test_valleys_are_held_against_the_height_of_the_peaks(height: float, told: bool) -> None:
+    # A short window, in which the background adds less than 0.02 to g2(0).
+    counts = exponential_comb(300, central=0.0, total=1e6)
+    tops = counts[1_000 + 125 - 7 : 1_000 + 125 + 8].mean()  # an eighth of the period
+    chosen = estimator(
+        tally("100 ps", "100 ns"),
+        kind="g2-zero-pulsed",
+        period="12.5 ns",
+        window="1 ns",
+        side_peaks=6,
+    )
+    found = chosen.with_profile(sums(counts + round(height * tops)))
+    assert found.profile["valley_depth"] == pytest.approx(height, rel=0.05)
+    assert ("peaks overlap, or background: valleys at" in found.note) == told
+    assert found.value < 0.02
