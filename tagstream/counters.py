@@ -16,6 +16,10 @@ DROP_REASONS = (
     "unlisted_input",
     "in_gap",
     "dead_time",
+    "repeated",  # of a message that came before, or out of turn
+    "foreign_stream",
+    "overlap",  # of a message whose interval was covered before
+    "shed",  # of a slice that was left out because more comes than can be processed
 )
 
 

@@ -15,7 +15,8 @@ from tagstream.conditioning.order import Order
 from tagstream.conditioning.stretch import AssumedStretch, Stretch, VouchedStretch
 from tagstream.counters import Counters
 from tagstream.errors import InputError
-from tagstream.feeds import Arrivals
+from tagstream.feeds import IDLE, Arrivals
+from tagstream.recording.layout import Mark
 from tagstream.settings import Settings
 from tagstream.units import TIME_LIMIT_PS
 
@@ -26,7 +27,8 @@ class Conditioned:
 
     counters: a copy, taken when they agreed with the blocks. latest_ps: the latest time that
     arrived. live_end_ps, last_tag_ps: end of the last block and its last tag; None before there
-    is one.
+    is one. marks: with stream times at which all channels, delayed, are past the mark;
+    no block before has reached them. arrived_s: as in `Arrivals`, of the piece.
     """
 
     blocks: list[Block]
@@ -34,6 +36,8 @@ class Conditioned:
     latest_ps: int | None
     live_end_ps: int | None
     last_tag_ps: int | None
+    marks: tuple[Mark, ...] = ()
+    arrived_s: float | None = None
 
 
 def conditioned(
@@ -81,9 +85,15 @@ class Conditioner:
 
     def push(self, piece: Arrivals) -> Conditioned:
         """The blocks that a piece completes."""
-        self._counters.arrived += piece.times_ps.size
+        if piece is IDLE:
+            return self._state([])
+        self._counters.arrived += piece.times_ps.size + sum(piece.dropped.values())
+        for reason, count in piece.dropped.items():
+            self._counters.drop(reason, count)
         blocks = list(self._taken(piece))
-        return self._state(blocks)
+        shift = self._judge.offset_ps + self._largest_delay_ps
+        marks = tuple(replace(mark, time_ps=mark.time_ps + shift) for mark in piece.marks)
+        return replace(self._state(blocks), marks=marks, arrived_s=piece.arrived_s)
 
     def finish(self) -> Conditioned:
         """The blocks that were still waiting when the feed ended."""

@@ -47,6 +47,11 @@ class Judge:
         return int(self._state[k.PENDING])
 
     @property
+    def offset_ps(self) -> int:
+        """What is added to the times of the feed since a new session began; 0 before."""
+        return int(self._state[k.OFFSET])
+
+    @property
     def latest_ps(self) -> int | None:
         """The latest good time so far; None before the first tag."""
         return int(self._state[k.LATEST]) if self._state[k.STARTED] else None

@@ -7,7 +7,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
-from tagstream.settings.quantities import PositiveTimePs, TickPs, TimePs
+from tagstream.settings.quantities import Bytes, PositiveTimePs, TickPs, TimePs
 from tagstream.settings.section import Section
 
 BitField = Annotated[tuple[int, int], Field(description="first bit and number of bits")]
@@ -155,7 +155,10 @@ class ZmqFeed(Section):
     address: str
     pattern: Literal["pull", "sub"] = "pull"
     bind: bool = False
-    receive_queue: int = Field(4, ge=1, le=1000)
+    stream: str | None = None  # the only stream that counts; absent: that of the first message
+    receive_queue: int = Field(4, ge=1, le=1000, strict=True)  # messages
+    max_message: Bytes = 64_000_000
+    server_key: Path | None = None  # public key of a peer that binds and wants encryption
 
 
 FeedSettings = (
@@ -170,7 +173,7 @@ FEED_KINDS: dict[str, type[Section]] = {
     "stdin": StdinFeed,
     "zmq": ZmqFeed,
 }
-LIVE_KINDS = ("tcp", "stdin", "zmq")  # understood, so that their runs replay; not yet received
+LIVE_KINDS = ("tcp", "stdin", "zmq")
 
 
 def check_bits(name: str, field: tuple[int, int]) -> None:

@@ -22,9 +22,12 @@ from tagstream.settings.sections import (
     Channel,
     Conditioning,
     Control,
+    Metrics,
     Publish,
+    Recording,
     Results,
     Rolling,
+    Security,
     Settings,
 )
 from tagstream.settings.validation import nearest, shown, validate_section
@@ -33,15 +36,13 @@ _TABLES: dict[str, type[Section]] = {
     "conditioning": Conditioning,
     "rolling": Rolling,
     "results": Results,
+    "recording": Recording,
     "publish": Publish,
     "control": Control,
+    "metrics": Metrics,
+    "security": Security,
 }
 _KEYS = ["title", "feed", "channels", "tally", "estimate", "alert", *_TABLES]
-_LATER = {
-    "recording": "this version does not record raw tags while it runs",
-    "metrics": "this version serves no metrics",
-    "security": "this version opens no socket",
-}
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,9 +122,7 @@ def read_toml(file: Path, what: str = "settings") -> dict[str, Any]:
 
 def _check_keys(table: dict[str, Any], file: str, problems: list[str]) -> None:
     for key in table:
-        if key in _LATER:
-            problems.append(f"{file}: [{key}]: {_LATER[key]}; remove the section")
-        elif key not in _KEYS:
+        if key not in _KEYS:
             problems.append(f"{file}: {key}: unknown section or key; {nearest(key, _KEYS)}")
 
 
@@ -208,18 +207,21 @@ def _where(key: str, number: int, table: Any) -> str:
 
 def _absolute(settings: Settings, base: Path) -> Settings:
     """Paths are relative to the settings file, not to the folder one happens to be in."""
-    feed = settings.feed
-    changed: dict[str, Any] = {
-        key: base / Path(getattr(feed, key)).expanduser()
-        for key in ("path", "scenario")
-        if key in type(feed).model_fields
-    }
-    results = settings.results
-    folder = base / results.folder.expanduser()
     return settings.model_copy(
         update={
-            "feed": feed.model_copy(update=changed),
-            "results": results.model_copy(update={"folder": folder}),
+            key: _with_absolute_paths(section, base)
+            for key in ("feed", "results", "recording", "security")
+            if (section := getattr(settings, key)) is not None
+        }
+    )
+
+
+def _with_absolute_paths(section: Section, base: Path) -> Section:
+    return section.model_copy(
+        update={
+            key: base / value.expanduser()
+            for key in type(section).model_fields
+            if isinstance(value := getattr(section, key), Path)
         }
     )
 

@@ -28,6 +28,8 @@ class CrossCorrelation(Section):
     max_lag_ps: PositiveTimePs = Field(alias="max_lag")
     bin_ps: PositiveTimePs = Field(alias="bin")
     normalisation: Literal["slices", "global"] = "slices"
+    split_by: str | None = None  # key of marks: a histogram of its own for each value
+    split_limit: Annotated[int, Field(ge=1, le=1000, strict=True)] = 64  # values; then "other"
 
     @property
     def bins_each_side(self) -> int:

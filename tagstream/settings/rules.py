@@ -6,7 +6,6 @@ from collections.abc import Iterator
 from fractions import Fraction
 from typing import Any
 
-from tagstream.settings.feeds import LIVE_KINDS
 from tagstream.settings.measures import CountRate, CrossCorrelation, G2Zero, G2ZeroPulsed
 from tagstream.settings.sections import Rolling, Settings
 from tagstream.settings.validation import nearest
@@ -54,8 +53,9 @@ def problems(parts: dict[str, Any]) -> Iterator[str]:
         if estimate.tally in tallies:
             yield from _g2_problems(estimate, where, tallies[estimate.tally])
     for number, alert in enumerate(parts["alerts"], 1):
-        yield from _unknown(f"[[alert]] {number} estimate", alert.estimate, names["estimate"])
-        yield from _unknown(f"[[alert]] {number} span", alert.span, ["run", *spans])
+        if alert.estimate is not None:
+            yield from _unknown(f"[[alert]] {number} estimate", alert.estimate, names["estimate"])
+            yield from _unknown(f"[[alert]] {number} span", alert.span, ["run", *spans])
     need = memory_bytes(parts["tallies"], rolling)
     if need > rolling.memory:
         yield (
@@ -162,18 +162,6 @@ def warnings(settings: Settings) -> list[str]:
         path = getattr(settings.feed, key, None)
         if path is not None and not path.exists():
             found.append(f"[feed] {key}: {path} does not exist")
-    if settings.feed.kind in LIVE_KINDS:
-        found.append(
-            f"[feed] kind: {settings.feed.kind} is understood for replays;"
-            " this version receives no live tags"
-        )
-    for key, present in (
-        ("[[alert]]", settings.alerts),
-        ("[publish]", settings.publish),
-        ("[control]", settings.control),
-    ):
-        if present:
-            found.append(f"{key}: checked, but this version raises no alerts and opens no socket")
     tick = getattr(settings.feed, "tick_ps", None)
     for tally in settings.tallies:
         if tick is not None and (text := bin_warning(tally, tick)):

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
@@ -38,6 +38,7 @@ class Conditioning(Section):
 
     max_disorder_ps: DisorderPs = Field(1_000_000, alias="max_disorder")
     max_jump_ps: JumpPs = Field(10 * PS_PER_S, alias="max_jump")
+    overload: Literal["shed", "wait"] = "shed"  # more than can be processed: leave out, or block
 
     @model_validator(mode="after")
     def _check(self) -> Conditioning:
@@ -74,25 +75,49 @@ class Rolling(Section):
 
 
 class Results(Section):
-    """Where run folders are made."""
+    """Where run folders are made, and how often latest.h5 is replaced."""
 
     folder: Path
+    every_ps: PositiveTimePs | None = Field(None, alias="every")  # absent: 1 s, longer when large
+    min_free: Bytes = 2_000_000_000  # below this, results pause
     name: Annotated[str, Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9_.-]{0,63}$")]
 
 
-class Alert(Section):
-    """A bound on an estimate."""
+class Recording(Section):
+    """Raw tags kept while the run goes on, in segments."""
 
-    estimate: str
-    span: str
+    folder: Path | None = None  # absent: the run folder
+    segment: Bytes = 4_000_000_000  # a segment is closed when it has this size ...
+    segment_time_ps: PositiveTimePs | None = Field(None, alias="segment_time")  # ... or length
+    keep: Bytes | None = None  # of closed segments of this run; absent: all
+    min_free: Bytes = 4_000_000_000  # below this, recording pauses
+
+
+class Alert(Section):
+    """A bound on an estimate over a span, or on a number of the health of the run."""
+
+    estimate: str | None = None
+    span: str | None = None
+    health: str | None = None
     above: float | None = None
     below: float | None = None
+    clear: float | None = None  # absent: the same bound
     hold_ps: NotNegativeTimePs = Field(0, alias="hold")
+    command: list[str] = Field(default_factory=list)  # program and arguments; no shell
 
     @model_validator(mode="after")
     def _check(self) -> Alert:
         if (self.above is None) == (self.below is None):
             raise ValueError("either `above` or `below`")
+        if (self.estimate is None) == (self.health is None):
+            raise ValueError("either `estimate` with `span`, or `health`")
+        if (self.estimate is None) != (self.span is None):
+            raise ValueError("`span` with `estimate`, and only there")
+        if self.clear is not None and (
+            (self.above is not None and self.clear > self.above)
+            or (self.below is not None and self.clear < self.below)
+        ):
+            raise ValueError("`clear` on the quiet side of the bound")
         return self
 
 
@@ -108,6 +133,19 @@ class Control(Section):
     address: str = "auto"
 
 
+class Metrics(Section):
+    """Where metrics are served as Prometheus text."""
+
+    listen: str = "127.0.0.1:9464"
+
+
+class Security(Section):
+    """Keys for sockets that others can reach."""
+
+    own_keys: Path = Field(alias="keys")  # the folder with the keys of this program
+    authorised: Path | None = None  # the folder with the public keys of those who may come in
+
+
 class Settings(Section):
     """The whole settings file, checked."""
 
@@ -120,8 +158,11 @@ class Settings(Section):
     estimates: list[EstimateSettings] = Field(default_factory=list, alias="estimate")
     alerts: list[Alert] = Field(default_factory=list, alias="alert")
     results: Results
+    recording: Recording | None = None
     publish: Publish | None = None
     control: Control | None = None
+    metrics: Metrics | None = None
+    security: Security | None = None
 
     @property
     def channel_index(self) -> dict[str, int]:

@@ -134,7 +134,8 @@ def test_all_problems_at_once(file: Path) -> None:
             'max_disorder = "20 s"',
             ["[conditioning]", "at least", "max_jump"],
         ),
-        ("[results]", "[recording]\n[results]", ["[recording]", "does not record", "remove"]),
+        ("[results]", '[recording]\nsegment = "0 GB"\n[results]', ["[recording] segment", "zero"]),
+        ("[results]", "[[alert]]\nabove = 1.0\n[results]", ["[[alert]] 1", "`health`"]),
         ("[results]", "[results]\nevry = 3", ["[results] evry", "unknown key"]),
         ('name = "emitter-3"', 'name = "../x"', ["[results] name", "../x"]),
         ('spans = ["10 s", "1 min"]', 'spans = "10 s"', ["[rolling] spans", "a list"]),
@@ -211,8 +212,10 @@ def test_a_bin_on_tick_edges_is_warned_of_with_the_two_nearest(file: Path) -> No
     assert "76 ps or 84 ps" in warning
 
 
-def test_what_this_version_lacks_is_said(file: Path) -> None:
-    more = '[[alert]]\nestimate = "g2_zero"\nspan = "10 s"\nabove = 0.1\n[publish]\naddress = "x"\n'
-    file.write_text(GOOD + more)
-    warnings = load_settings(file).warnings
-    assert [text.split(":")[0] for text in warnings[1:]] == ["[[alert]]", "[publish]"]
+def test_paths_of_every_section_are_relative_to_the_file(file: Path) -> None:
+    file.write_text(GOOD + '[recording]\nfolder = "tags"\n[security]\nkeys = "keys"\n')
+    settings = load_settings(file).settings
+    assert settings.recording is not None
+    assert settings.recording.folder == file.parent / "tags"
+    assert settings.security is not None
+    assert settings.security.own_keys == file.parent / "keys"
