@@ -8,8 +8,10 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 
+from tagstream import estimates
 from tagstream.conditioning import conditioned
 from tagstream.conditioning import kernels as conditioning_kernels
+from tagstream.conditioning.ordering import kernels as ordering_kernels
 from tagstream.errors import SettingsError
 from tagstream.feeds import Feed, build_feed
 from tagstream.feeds.paced import paced
@@ -75,9 +77,13 @@ def started(plan: Plan, stop: StopRequest) -> Iterator[Started]:
     settings = plan.loaded.settings
     files, conditioning = OneThread("files"), OneThread("conditioning")
     folders: list[RunFolder] = []
-    warm = conditioning.submit(conditioning_kernels.warm_up)
+    warm = [
+        conditioning.submit(kernels.warm_up) for kernels in (conditioning_kernels, ordering_kernels)
+    ]
+    warm.append(files.submit(estimates.warm_up))
     tally_kernels.warm_up()
-    warm.result()
+    for done in warm:
+        done.result()
 
     def open_writer(header: RunHeader) -> RunWriter:
         folder = RunFolder.create(settings.results.folder, plan.name or settings.results.name)

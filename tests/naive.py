@@ -53,6 +53,26 @@ def judged(
     return kept, dropped
 
 
+def largest_disorder(times_ps: list[int], latest_ps: int) -> int:
+    """How far a time lies before the latest so far, at most."""
+    largest = 0
+    for t in times_ps:
+        latest_ps = max(latest_ps, t)
+        largest = max(largest, latest_ps - t)
+    return largest
+
+
+def delayed(
+    tags: list[tuple[int, int]], channel_of: dict[int, int], delays_ps: list[int], shift_ps: int
+) -> list[tuple[int, int]]:
+    """(time, channel) with the delay of the channel, of the inputs that have one."""
+    return [
+        (t + shift_ps + delays_ps[channel_of[number]], channel_of[number])
+        for t, number in tags
+        if number in channel_of
+    ]
+
+
 def ordered(tags: list[tuple[int, int]]) -> list[tuple[int, int]]:
     """By time; equal times keep their order (Python's sort is stable)."""
     return sorted(tags, key=lambda tag: tag[0])
@@ -87,6 +107,32 @@ def histogram_of_one(times: list[int], bin_ps: int, bins_each_side: int) -> list
     counts = histogram(times, times, bin_ps, bins_each_side)
     counts[bins_each_side] -= len(times)
     return counts
+
+
+def value_at(marks: list[tuple[int, Any]], time_ps: int) -> Any:
+    """The value in force: that of the last mark, by time and then by arrival, at or before."""
+    value: Any = "unmarked"
+    for at_ps, marked in sorted(marks, key=lambda mark: mark[0]):
+        value = marked if at_ps <= time_ps else value
+    return value
+
+
+def split_histograms(
+    starts: list[int],
+    stops: list[int],
+    marks: list[tuple[int, Any]],
+    bins: tuple[int, int],
+) -> dict[Any, list[int]]:
+    """For each value, the pairs whose later tag comes while it is in force. bins: width, K."""
+    width, each_side = bins
+    found: dict[Any, list[int]] = {}
+    for start in starts:
+        for stop in stops:
+            counts = found.setdefault(value_at(marks, max(start, stop)), [0] * (2 * each_side + 1))
+            k = (2 * (stop - start) + width) // (2 * width)
+            if abs(k) <= each_side:
+                counts[k + each_side] += 1
+    return found
 
 
 def selected(times: list[int], channels: list[int], channel: int) -> list[int]:

@@ -16,6 +16,7 @@ SHARED = {
     "compiled",
     "counters",
     "errors",
+    "marks",
     "recording",
     "settings",
     "simulation",
@@ -25,8 +26,10 @@ SHARED = {
 THROUGH_THEIR_CLASS = {
     "later": "naive.judged",
     "fill_plain": "naive.judged",
+    "fill_together": "naive.judged",
     "fill_judged": "naive.judged",
     "fill_survivors": "naive.without_dead_time",
+    "fill_pairs_singly": "fill_pairs",
     "fill_close_pairs": "add_sparse",
 }
 MODULES = sorted(PACKAGE.rglob("*.py"))

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from tagstream.block import Block
 from tagstream.conditioning.judge import Judge
 from tagstream.conditioning.kernels import fill_dead_time_cut
-from tagstream.conditioning.order import Order
+from tagstream.conditioning.ordering.order import Order
 from tagstream.conditioning.stretch import AssumedStretch, Stretch, VouchedStretch
 from tagstream.counters import Counters
 from tagstream.errors import InputError
@@ -62,6 +62,12 @@ def conditioned(
         raise broken
 
 
+def _says_nothing(piece: Arrivals) -> bool:
+    """Whether a piece only brings marks or counts, in a pause: it ends no stretch."""
+    gap = piece.gap_before or piece.lossy
+    return piece.times_ps.size == 0 and piece.begin_ps is None and not gap
+
+
 class Conditioner:
     """Pieces as decoded to blocks of ordered tags in live time.
 
@@ -77,7 +83,7 @@ class Conditioner:
         self._dead_times = np.array([c.dead_time_ps for c in settings.channels.values()], np.int64)
         self._last_kept = np.zeros(len(delays), np.int64)
         self._ever_kept = np.zeros(len(delays), np.uint8)
-        self._order = Order()
+        self._order = Order(np.array(delays, np.int64))
         self._judge = Judge(settings, self._counters, self._order)
         self._stretch: Stretch | None = None
         self._vouched_to_ps: int | None = None  # raw end of the last complete interval
@@ -90,7 +96,7 @@ class Conditioner:
         self._counters.arrived += piece.times_ps.size + sum(piece.dropped.values())
         for reason, count in piece.dropped.items():
             self._counters.drop(reason, count)
-        blocks = list(self._taken(piece))
+        blocks = [] if _says_nothing(piece) else list(self._taken(piece))
         shift = self._judge.offset_ps + self._largest_delay_ps
         marks = tuple(replace(mark, time_ps=mark.time_ps + shift) for mark in piece.marks)
         return replace(self._state(blocks), marks=marks, arrived_s=piece.arrived_s)

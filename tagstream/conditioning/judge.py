@@ -9,7 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tagstream.conditioning import kernels as k
-from tagstream.conditioning.order import Order
+from tagstream.conditioning.ordering.kernels import FIRST
+from tagstream.conditioning.ordering.order import Order
 from tagstream.counters import Counters
 from tagstream.feeds import Arrivals
 from tagstream.settings import Channel, Settings
@@ -38,6 +39,7 @@ class Judge:
         for index, channel in enumerate(settings.channels.values()):
             self._delays_ps[index] = channel.delay_ps
         self._state = np.zeros(k.STATE_SIZE, np.int64)
+        self._state[k.SHUFFLED] = FIRST
         self._pending_times = np.zeros(k.CONFIRMATIONS + 1, np.int64)
         self._pending_inputs = np.zeros(k.CONFIRMATIONS + 1, np.int64)
 
@@ -114,7 +116,8 @@ class Judge:
             out_channels,
             counts,
         )
-        self._order.take(int(counts[k.KEPT]), bool(counts[k.UNORDERED]))
+        unordered, shuffled_ps = bool(counts[k.UNORDERED]), int(self._state[k.SHUFFLED])
+        self._order.take(int(counts[k.KEPT]), unordered, shuffled_ps)
         for reason, slot in _REASONS.items():
             self._counters.drop(reason, int(counts[slot]))
         largest = int(self._state[k.DISORDER])
@@ -156,7 +159,7 @@ class Judge:
         for i in range(times.size):
             self._state[k.STARTED] = 0
             self._run(times[i : i + 1], inputs[i : i + 1], EVERYWHERE, vouched=True)
-        self._state[k.LATEST] = latest
+        self._state[k.LATEST] = self._state[k.SHUFFLED] = latest
 
     def _drop_pending(self, reason: str | None = None) -> None:
         far = "late" if self._state[k.PENDING_BACK] else "jump"

@@ -1,4 +1,4 @@
-"""Kernels of conditioning: judge in arrival order, order in time, cut dead time.
+"""Kernels of conditioning: judge in arrival order, cut dead time.
 
 They see arrays and integers only and fill arrays that the caller owns. Each has a slow twin in
 tests/naive.py.
@@ -13,15 +13,18 @@ from numpy.typing import NDArray
 
 from tagstream.compiled import kernel
 
-# Slots of the state of `fill_judged`, int64.
-LATEST, STARTED, OFFSET, PENDING, PENDING_LATEST, PENDING_BACK, DISORDER = range(7)
-STATE_SIZE = 7
+# Slots of the state of `fill_judged`, int64. SHUFFLED: the latest time when last a tag came
+# before it; the tags after that moment came in order.
+LATEST, STARTED, OFFSET, PENDING, PENDING_LATEST, PENDING_BACK, DISORDER, SHUFFLED = range(8)
+STATE_SIZE = 8
 # Slots of its counts, int64.
 KEPT, LATE, JUMP, OVERFLOW, OUTSIDE, UNLISTED, UNORDERED = range(7)
 COUNT_SIZE = 7
 
 CONFIRMATIONS = 16  # tags that must agree with a first one before a jump in time is believed
 UNLISTED_INPUT = 255  # entry of the table of channels for an input without a channel
+CHUNK = 1024  # tags that are looked at together: they stay in the nearest cache
+HALF_RANGE = 1 << 62  # sums and differences of two times below this stay in int64
 
 
 @kernel
@@ -43,7 +46,7 @@ def fill_plain(
     out_channels: NDArray[np.uint8],
     counts: NDArray[np.int64],
 ) -> int:
-    """Take tags from `first` on while nothing is wrong with their times.
+    """Take tags from `first` on, one by one, while nothing is wrong with their times.
 
     Arguments as in `fill_judged`. Returns the index of the first tag that is late, far from the
     others or outside the interval, else the number of tags. Cost: one pass without rare cases.
@@ -56,6 +59,7 @@ def fill_plain(
     end = end - offset if offset >= 0 or end <= limit + offset else limit + 1
     latest = state[0] - offset
     largest, kept, unlisted, unordered = state[6], counts[0], counts[5], counts[6]
+    shuffled = state[7]
     last = out_times[np.uint64(kept - 1)] if kept > 0 else -limit - limit // 256
     i = first
     size = times_ps.size
@@ -64,6 +68,7 @@ def fill_plain(
         if t > later(latest, jump, limit) or t < latest - disorder or t < begin or t >= end:
             break
         largest = max(largest, latest - t)
+        shuffled = latest + offset if t < latest else shuffled
         latest = max(latest, t)
         channel = channel_of[inputs[np.uint64(i)]]
         listed = channel != UNLISTED_INPUT
@@ -75,9 +80,151 @@ def fill_plain(
         kept += np.int64(listed)
         unlisted += 1 - np.int64(listed)
         i += 1
-    state[0], state[6] = latest + offset, largest
+    state[0], state[6], state[7] = latest + offset, largest, shuffled
     counts[0], counts[5], counts[6] = kept, unlisted, unordered
     return i
+
+
+@kernel
+def is_ordered(times_ps: NDArray[np.int64]) -> bool:
+    """Whether no time is before the one before it. times_ps: int64, n."""
+    steps_back = 0
+    for i in range(1, times_ps.size):
+        steps_back += int(times_ps[np.uint64(i)] < times_ps[np.uint64(i - 1)])
+    return steps_back == 0
+
+
+@kernel
+def largest_disorder(times_ps: NDArray[np.int64], latest_ps: int) -> int:
+    """How far a tag lies before the latest one so far, at most; 0 if all are in order.
+
+    times_ps: int64, n. latest_ps: of the tags before. No two of them may be HALF_RANGE apart.
+    """
+    # Each step waits for the one before it. So four quarters go side by side; what was the latest
+    # before each is a maximum, which waits for nothing.
+    quarter = times_ps.size // 4
+    latest_a = latest = latest_ps
+    for i in range(quarter):
+        latest = max(latest, times_ps[np.uint64(i)])
+    latest_b = latest
+    for i in range(quarter, 2 * quarter):
+        latest = max(latest, times_ps[np.uint64(i)])
+    latest_c = latest
+    for i in range(2 * quarter, 3 * quarter):
+        latest = max(latest, times_ps[np.uint64(i)])
+    latest_d = latest
+    a = b = c = d = np.int64(0)
+    for i in range(quarter):
+        t = times_ps[np.uint64(i)]
+        a = max(a, latest_a - t)
+        latest_a = max(latest_a, t)
+        t = times_ps[np.uint64(i + quarter)]
+        b = max(b, latest_b - t)
+        latest_b = max(latest_b, t)
+        t = times_ps[np.uint64(i + 2 * quarter)]
+        c = max(c, latest_c - t)
+        latest_c = max(latest_c, t)
+        t = times_ps[np.uint64(i + 3 * quarter)]
+        d = max(d, latest_d - t)
+        latest_d = max(latest_d, t)
+    for t in times_ps[4 * quarter :]:
+        d = max(d, latest_d - t)
+        latest_d = max(latest_d, t)
+    return max(max(a, b), max(c, d))
+
+
+@kernel
+def fill_moved(
+    times_ps: NDArray[np.int64],
+    inputs: NDArray[Any],
+    shift_ps: int,
+    channel_of: NDArray[np.uint8],
+    delays_ps: NDArray[np.int64],
+    out_times: NDArray[np.int64],
+    out_channels: NDArray[np.uint8],
+) -> int:
+    """Give tags their channel, the delay of that channel and a common shift.
+
+    times_ps, inputs: n. shift_ps: added to all. out_*: at least n long. Tags of inputs without
+    a channel are left out. Returns how many there are. Each step goes over all tags before the
+    next one does, so that several can be taken at once.
+    """
+    n = times_ps.size
+    unlisted = 0
+    for i in range(n):
+        channel = channel_of[inputs[np.uint64(i)]]
+        out_channels[np.uint64(i)] = channel
+        unlisted += int(channel == UNLISTED_INPUT)
+    for i in range(n):
+        delay = delays_ps[out_channels[np.uint64(i)]]
+        out_times[np.uint64(i)] = times_ps[np.uint64(i)] + (shift_ps + delay)
+    if unlisted == 0:
+        return n
+    kept = 0
+    for i in range(n):
+        out_times[np.uint64(kept)] = out_times[np.uint64(i)]
+        out_channels[np.uint64(kept)] = out_channels[np.uint64(i)]
+        kept += int(out_channels[np.uint64(i)] != UNLISTED_INPUT)
+    return kept
+
+
+@kernel
+def fill_together(
+    times_ps: NDArray[np.int64],
+    inputs: NDArray[Any],
+    first: int,
+    rules: NDArray[np.int64],
+    channel_of: NDArray[np.uint8],
+    delays_ps: NDArray[np.int64],
+    state: NDArray[np.int64],
+    out_times: NDArray[np.int64],
+    out_channels: NDArray[np.uint8],
+    counts: NDArray[np.int64],
+) -> int:
+    """The same as `fill_plain`, a CHUNK at a time, while nothing is wrong in the whole chunk.
+
+    Returns the index of the first tag of the chunk that it leaves to be looked at one by one.
+    """
+    limit, offset = rules[2], state[2]
+    size = times_ps.size
+    begin = first
+    while begin < size:
+        chunk = times_ps[begin : begin + CHUNK]
+        least, most = chunk[0], chunk[chunk.size - 1]
+        ordered = is_ordered(chunk)
+        if not ordered:
+            for t in chunk:
+                least = min(least, t)
+                most = max(most, t)
+        if least < -HALF_RANGE // 2 or most > HALF_RANGE // 2 or abs(offset) > HALF_RANGE // 2:
+            break
+        latest = state[0] - offset
+        far = most > latest + min(rules[1], HALF_RANGE) or latest < -HALF_RANGE // 2
+        if far or least + offset < rules[3] or most + offset >= rules[4]:
+            break
+        if most + offset > limit or least + offset < -limit:
+            break
+        disorder = max(latest - least, 0) if ordered else largest_disorder(chunk, latest)
+        if disorder > rules[0]:
+            break
+        kept = counts[0]
+        more = fill_moved(
+            chunk,
+            inputs[begin : begin + CHUNK],
+            offset,
+            channel_of,
+            delays_ps,
+            out_times[kept:],
+            out_channels[kept:],
+        )
+        counts[6] |= int(not is_ordered(out_times[max(kept - 1, 0) : kept + more]))
+        counts[0] += more
+        counts[5] += chunk.size - more
+        state[0] = max(latest, most) + offset
+        state[6] = max(state[6], disorder)
+        state[7] = state[0] if disorder > 0 else state[7]
+        begin += CHUNK
+    return min(begin, size)
 
 
 @kernel
@@ -123,20 +270,13 @@ def fill_judged(
     size = times_ps.size
     while i < size:
         if state[1] == 1 and state[3] == 0:
-            i = fill_plain(
-                times_ps,
-                inputs,
-                i,
-                rules,
-                channel_of,
-                delays_ps,
-                state,
-                out_times,
-                out_channels,
-                counts,
-            )
-            if i == size:
-                break
+            out = (out_times, out_channels, counts)
+            i = fill_together(times_ps, inputs, i, rules, channel_of, delays_ps, state, *out)
+            stop = min(i + CHUNK, size)
+            few = times_ps[:stop]
+            i = fill_plain(few, inputs, i, rules, channel_of, delays_ps, state, *out)
+            if i == stop:
+                continue
         t, offset = times_ps[i], state[2]
         beyond = t > limit or t < -limit
         if beyond or (offset > 0 and t > limit - offset) or (offset < 0 and t < -limit - offset):
@@ -178,73 +318,6 @@ def fill_judged(
             i += 1
         # else the tag is plain again: the loop takes it with those that follow
     return i
-
-
-@kernel
-def fill_bucketed(
-    times_ps: NDArray[np.int64],
-    channels: NDArray[np.uint8],
-    starts: NDArray[np.int32],
-    out_times: NDArray[np.int64],
-    out_channels: NDArray[np.uint8],
-) -> None:
-    """Copy tags nearly into order: by narrow intervals of time, in arrival order inside each.
-
-    times_ps, channels: n > 0. starts: int32, scratch, a power of two of intervals plus one.
-    out_*: n. Afterwards tags are out of order only among the few of one interval, and equal
-    times are in arrival order, so that `fill_ordered` has few moves left. Cost: three passes,
-    whatever the disorder.
-    """
-    least, most = times_ps[0], times_ps[0]
-    for t in times_ps:
-        least = min(least, t)
-        most = max(most, t)
-    shift = np.int64(0)
-    while ((most - least) >> shift) >= starts.size - 1:
-        shift += 1
-    starts[:] = 0
-    for t in times_ps:
-        starts[np.uint64(((t - least) >> shift) + 1)] += 1
-    total = starts[0]
-    for i in range(1, starts.size):
-        total += starts[i]
-        starts[i] = total
-    for i in range(times_ps.size):
-        t = times_ps[i]
-        interval = np.uint64((t - least) >> shift)
-        place = starts[interval]
-        starts[interval] = place + 1
-        out_times[np.uint64(place)] = t
-        out_channels[np.uint64(place)] = channels[i]
-
-
-@kernel
-def fill_ordered(times_ps: NDArray[np.int64], channels: NDArray[np.uint8], most_moves: int) -> int:
-    """Sort tags in place by time, stably, by insertion; good for nearly ordered tags.
-
-    times_ps, channels: n, rearranged. Gives up once more than `most_moves` moves were made and
-    returns the number of tags then in order (a permutation that keeps equal times in arrival
-    order is still in place, so a stable sort can go on from it); returns n when done.
-    """
-    moves = 0
-    before = times_ps[0] if times_ps.size > 0 else 0
-    for i in range(1, times_ps.size):
-        t = times_ps[i]
-        if t >= before:
-            before = t
-            continue
-        channel = channels[i]
-        j = i
-        while j > 0 and times_ps[np.uint64(j - 1)] > t:
-            times_ps[np.uint64(j)] = times_ps[np.uint64(j - 1)]
-            channels[np.uint64(j)] = channels[np.uint64(j - 1)]
-            j -= 1
-        times_ps[np.uint64(j)] = t
-        channels[np.uint64(j)] = channel
-        moves += i - j
-        if moves > most_moves:
-            return i + 1
-    return int(times_ps.size)
 
 
 @kernel
@@ -295,7 +368,4 @@ def warm_up() -> None:
             np.empty(4, np.uint8),
             np.zeros(COUNT_SIZE, np.int64),
         )
-    starts = np.zeros(9, np.int32)
-    fill_bucketed(times, channels, starts, np.empty_like(times), np.empty_like(channels))
-    fill_ordered(times, channels, 8)
     fill_dead_time_cut(times, channels, delays, np.zeros(256, np.int64), np.zeros(256, np.uint8))

@@ -91,3 +91,8 @@ def build_estimator(
     module, name = _KINDS[settings.kind].split(":")
     builder: Callable[..., Estimator] = getattr(import_module(module), name)
     return builder(settings, channels, tallies)
+
+
+def warm_up() -> None:
+    """Load the library of special functions, which takes as long as counting 10^7 tags."""
+    import_module("scipy.special")

@@ -83,6 +83,14 @@ def fill_times(
         zero = min(max(zeros_ps[group], -limit_ps - 1), limit_ps + 1)
         most = limit_ps - max(zero, 0)  # what an offset may be: no sum here overflows
         least = -limit_ps - min(zero, 0)
+        low = high = np.int64(0)
+        for i in range(begin, end):
+            low = min(low, np.int64(offsets_ps[np.uint64(i)]))
+            high = max(high, np.int64(offsets_ps[np.uint64(i)]))
+        if least <= low and high <= most:  # as nearly always: no tag needs a look of its own
+            for i in range(begin, end):
+                times_ps[np.uint64(i)] = zero + np.int64(offsets_ps[np.uint64(i)])
+            continue
         for i in range(begin, end):
             offset = np.int64(offsets_ps[i])
             if offset > most:

@@ -18,6 +18,7 @@ CHUNK = 1024  # tags whose candidates are kept at a time: they stay in the neare
 FEW_CHANNELS = 8  # up to which counting channel by channel is faster
 TWO = 2  # steps of a pointer that are taken without asking whether they are needed
 FOUR = 4  # pairs that are taken together
+LONG = 1 << 60  # starts further apart are not taken together: their lags could not be doubled
 GROUP = 8  # tags that are passed over together when none has a close neighbour
 
 
@@ -127,18 +128,13 @@ def bin_of(twice: int, divisor: int, multiplier: int, shift: int) -> np.uint64:
 
 
 @kernel
-def fill_pairs(
+def fill_pairs_singly(
     starts_ps: NDArray[np.int64],
     stops_ps: NDArray[np.int64],
     division: NDArray[np.int64],
     counts: NDArray[np.int64],
 ) -> None:
-    """Add all pairs of a start and a stop to the histogram of their lag, stop - start.
-
-    starts_ps, stops_ps: int64, non-decreasing. division: of 2 bin, see `bin_of`. counts: int64,
-    2K + 2; bin k = -K..K is counts[k + K] and holds the lags with
-    floor((2 lag + bin) / (2 bin)) = k: half-open, centred on k bin. Lags outside all bins are
-    not counted; what the last entry holds means nothing. Doubled lags keep everything whole.
+    """The same as `fill_pairs`, start by start; for bins that no multiplication finds.
 
     Two pointers: of each start the first stop in reach is found, and those that follow are taken
     FOUR at a time; what is out of reach among the four goes to the last entry, since leaving it
@@ -173,6 +169,60 @@ def fill_pairs(
                     break
                 counts[bin_of(2 * lag + reach, divisor, multiplier, places)] += 1
                 j += 1
+
+
+@kernel
+def fill_pairs(
+    starts_ps: NDArray[np.int64],
+    stops_ps: NDArray[np.int64],
+    division: NDArray[np.int64],
+    counts: NDArray[np.int64],
+) -> None:
+    """Add all pairs of a start and a stop to the histogram of their lag, stop - start.
+
+    starts_ps, stops_ps: int64, non-decreasing. division: of 2 bin, see `bin_of`. counts: int64,
+    2K + 2; bin k = -K..K is counts[k + K] and holds the lags with
+    floor((2 lag + bin) / (2 bin)) = k: half-open, centred on k bin. Lags outside all bins are
+    not counted; what the last entry holds means nothing. Doubled lags keep everything whole.
+
+    Two pointers: FOUR starts at a time meet all stops in reach of the first or the last of them.
+    A pair that is out of reach goes to the last entry, since leaving it out would be a branch
+    that nothing foretells. Doubled lags are taken modulo 2^64, where those out of reach on the
+    lower side are large: one comparison serves both sides. Cost: one pass over both, a step per
+    pair.
+    """
+    if division[1] == 0:
+        fill_pairs_singly(starts_ps, stops_ps, division, counts)
+        return
+    multiplier, places = np.uint64(division[1]), np.uint64(division[2])
+    reach = (counts.size - 1) * (division[0] // 2)
+    least, most = reach // 2, (reach + 1) // 2
+    top, size = np.uint64(2 * most + reach), stops_ps.size
+    low, high = 0, 0
+    whole = starts_ps.size - starts_ps.size % FOUR
+    for i in range(0, whole, FOUR):
+        first, last = starts_ps[np.uint64(i)], starts_ps[np.uint64(i + FOUR - 1)]
+        if np.uint64(last) - np.uint64(first) > np.uint64(LONG):
+            fill_pairs_singly(starts_ps[i : i + FOUR], stops_ps[low:], division, counts)
+            continue
+        while low < size and stops_ps[np.uint64(low)] - first < -least:
+            low += 1
+        high = max(high, low)
+        while high < size and stops_ps[np.uint64(high)] - last < most:
+            high += 1
+        a, d = reach - 2 * first, reach - 2 * last
+        b, c = reach - 2 * starts_ps[np.uint64(i + 1)], reach - 2 * starts_ps[np.uint64(i + 2)]
+        for j in range(low, high):
+            stop = 2 * stops_ps[np.uint64(j)]
+            of_a = (min(np.uint64(stop + a), top) * multiplier) >> places
+            of_b = (min(np.uint64(stop + b), top) * multiplier) >> places
+            of_c = (min(np.uint64(stop + c), top) * multiplier) >> places
+            of_d = (min(np.uint64(stop + d), top) * multiplier) >> places
+            counts[of_a] += 1
+            counts[of_b] += 1
+            counts[of_c] += 1
+            counts[of_d] += 1
+    fill_pairs_singly(starts_ps[whole:], stops_ps[low:], division, counts)
 
 
 @kernel

@@ -51,6 +51,9 @@ class PairHistograms:
         self._candidates = np.empty(CHUNK + 1, np.int64)
         self._wanted = np.zeros(number, np.uint8)
         self._wanted[[channel for pair in self._pairs for channel in pair]] = 1
+        # Room for the times of each channel, and of all wanted ones.
+        self._rooms = [np.empty(0, np.int64) for _ in range(number + 1)]
+        self._wanted_channels = np.empty(0, np.uint8)
         self._old_times: NDArray[np.int64] = np.empty(0, np.int64)
         self._old_channels: NDArray[np.uint8] = np.empty(0, np.uint8)
 
@@ -82,16 +85,24 @@ class PairHistograms:
 
     def add_dense(self, times: NDArray[np.int64], channels: NDArray[np.uint8]) -> None:
         """The same by two pointers: (all starts, new stops) and (new starts, old stops)."""
-        old, new = {}, {}
+        old, both = {}, {}
         for channel in np.flatnonzero(self._wanted).tolist():
-            old[channel] = self._select(self._old_times, self._old_channels, channel)
-            new[channel] = self._select(times, channels, channel)
+            room = self._room(channel, self._old_times.size + times.size + 2)
+            first = fill_selected(self._old_times, self._old_channels, channel, room)
+            more = fill_selected(times, channels, channel, room[first:])
+            old[channel], both[channel] = room[:first], room[: first + more]
         for (start, stop), counts in zip(self._pairs, self._all_counts, strict=False):
-            all_starts = np.concatenate((old[start], new[start]))
-            fill_pairs(all_starts, new[stop], self._division, counts)
-            fill_pairs(new[start], old[stop], self._division, counts)
+            new_starts, new_stops = (both[c][old[c].size :] for c in (start, stop))
+            fill_pairs(both[start], new_stops, self._division, counts)
+            fill_pairs(new_starts, old[stop], self._division, counts)
             if start == stop:
-                counts[self._zero_bin] -= new[start].size  # each tag met itself
+                counts[self._zero_bin] -= new_starts.size  # each tag met itself
+
+    def _room(self, channel: int, size: int) -> NDArray[np.int64]:
+        """Room for times of a channel, used again and again: new memory costs more than counting."""
+        if self._rooms[channel].size < size:
+            self._rooms[channel] = np.empty(size + size // 4, np.int64)
+        return self._rooms[channel]
 
     def _fill_close(
         self, times: NDArray[np.int64], channels: NDArray[np.uint8], first: int
@@ -112,15 +123,12 @@ class PairHistograms:
         if self._wanted.all():
             return piece.times_ps, piece.channels
         room = piece.times_ps.size + 1
-        times, channels = np.empty(room, np.int64), np.empty(room, np.uint8)
+        times = self._room(self._number, room)
+        if self._wanted_channels.size < room:
+            self._wanted_channels = np.empty(room + room // 4, np.uint8)
+        channels = self._wanted_channels
         n = fill_wanted(piece.times_ps, piece.channels, self._wanted, times, channels)
         return times[:n], channels[:n]
-
-    def _select(
-        self, times: NDArray[np.int64], channels: NDArray[np.uint8], channel: int
-    ) -> NDArray[np.int64]:
-        out = np.empty(times.size + 1, np.int64)
-        return out[: fill_selected(times, channels, channel, out)]
 
     def _keep_since(
         self, oldest_ps: int, times: NDArray[np.int64], channels: NDArray[np.uint8]

@@ -25,6 +25,7 @@ class Singles:
         self._live_time_ps = 0
         self._last = {clock: np.zeros(4, np.int64) for clock in clocks}
         self._periods = np.zeros((channels, 3), np.int64)
+        self._room = np.empty(0, np.int64)  # used again and again: new memory costs much
 
     def add(self, piece: Block) -> None:
         first = int(np.searchsorted(piece.times_ps, np.int64(piece.begin_ps)))
@@ -33,9 +34,10 @@ class Singles:
         for clock, last in self._last.items():
             if piece.opens:
                 last[:] = 0
-            times = np.empty(piece.times_ps.size + 1, np.int64)
-            count = fill_selected(piece.times_ps, piece.channels, clock, times)
-            fill_periods(times[:count], last, self._periods[clock])
+            if self._room.size <= piece.times_ps.size:
+                self._room = np.empty(piece.times_ps.size * 5 // 4 + 1, np.int64)
+            count = fill_selected(piece.times_ps, piece.channels, clock, self._room)
+            fill_periods(self._room[:count], last, self._periods[clock])
 
     def take(self) -> dict[str, NDArray[Any]]:
         """The sums of the slice that ended; the next begins at zero."""

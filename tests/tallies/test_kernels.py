@@ -32,6 +32,29 @@ def test_pairs_equal_the_naive_histogram(
     assert pairs(starts, stops, bin_ps, bins) == naive.histogram(starts, stops, bin_ps, bins)
 
 
+@given(sorted_times(), sorted_times(), st.integers(1, 20))
+def test_pairs_of_long_bins_are_divided(starts: list[int], stops: list[int], bins: int) -> None:
+    bin_ps = 10**9 + 7  # beyond what a multiplication finds
+    assert exact_division(bins, bin_ps)[1] == 0
+    far = [[t * 10**7 for t in times] for times in (starts, stops)]
+    assert pairs(*far, bin_ps, bins) == naive.histogram(*far, bin_ps, bins)
+
+
+@given(
+    st.lists(st.integers(0, 20), min_size=4, max_size=9),
+    st.lists(st.integers(0, 20), max_size=9),
+    st.integers(1, 8),
+    st.sampled_from([1 << 61, 1 << 62, (1 << 62) + 3, -(1 << 62)]),
+)
+def test_starts_far_apart_are_not_taken_together(
+    starts: list[int], stops: list[int], cut: int, away: int
+) -> None:
+    """Twice such a lag, modulo 2^64, may be a small number."""
+    near = sorted([t + (0 if i < cut else away) for i, t in enumerate(sorted(starts))])
+    both = sorted([*stops, *(t + away for t in stops)])
+    assert pairs(near, both, 3, 4) == naive.histogram(near, both, 3, 4)
+
+
 @given(sorted_times(), sorted_times(), st.integers(0, 30), st.integers(1, 20))
 def test_swapping_mirrors_exactly_when_the_bin_is_odd(
     starts: list[int], stops: list[int], half: int, bins: int

@@ -1,0 +1,1 @@
+"""Tags wait here until no earlier one can come, and leave in order."""
