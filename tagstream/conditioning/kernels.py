@@ -130,7 +130,7 @@ def largest_disorder(times_ps: NDArray[np.int64], latest_ps: int) -> int:
     for t in times_ps[4 * quarter :]:
         d = max(d, latest_d - t)
         latest_d = max(latest_d, t)
-    return max(max(a, b), max(c, d))
+    return int(max(max(a, b), max(c, d)))
 
 
 @kernel

@@ -99,7 +99,7 @@ class PairHistograms:
                 counts[self._zero_bin] -= new_starts.size  # each tag met itself
 
     def _room(self, channel: int, size: int) -> NDArray[np.int64]:
-        """Room for times of a channel, used again and again: new memory costs more than counting."""
+        """Room for times of a channel, used again and again: new memory costs time."""
         if self._rooms[channel].size < size:
             self._rooms[channel] = np.empty(size + size // 4, np.int64)
         return self._rooms[channel]

@@ -78,9 +78,18 @@ def test_a_long_stream_is_judged_as_tag_by_tag() -> None:
         end = min(begin + int(rng.integers(1, 3 * k.CHUNK)), size)
         part = slice(begin, end)
         used = k.fill_judged(
-            times[part], inputs[part], rules, table, delays, state, *pending,
-            out_times, out_channels, counts,
-        )  # fmt: skip
+            times[part],
+            inputs[part],
+            rules,
+            table,
+            delays,
+            state,
+            pending[0],
+            pending[1],
+            out_times,
+            out_channels,
+            counts,
+        )
         assert used == end - begin
         begin = end
     kept, dropped = naive.judged(tags, 1_000, 10**6, limit)

@@ -36,8 +36,8 @@ def test_pairs_equal_the_naive_histogram(
 def test_pairs_of_long_bins_are_divided(starts: list[int], stops: list[int], bins: int) -> None:
     bin_ps = 10**9 + 7  # beyond what a multiplication finds
     assert exact_division(bins, bin_ps)[1] == 0
-    far = [[t * 10**7 for t in times] for times in (starts, stops)]
-    assert pairs(*far, bin_ps, bins) == naive.histogram(*far, bin_ps, bins)
+    starts, stops = ([t * 10**7 for t in times] for times in (starts, stops))
+    assert pairs(starts, stops, bin_ps, bins) == naive.histogram(starts, stops, bin_ps, bins)
 
 
 @given(

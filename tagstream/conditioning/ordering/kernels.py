@@ -36,7 +36,7 @@ def fill_apart(
         out_channels[np.uint64(a)] = channel
         rest_times[np.uint64(b)] = t
         rest_channels[np.uint64(b)] = channel
-        is_chosen = np.int64(chosen[channel])
+        is_chosen = int(chosen[channel])
         a += is_chosen
         b += 1 - is_chosen
     return a - 1
@@ -68,15 +68,15 @@ def fill_merged(
         out_times[np.uint64(i)] = min(a, b)
         channel = channels_a[np.uint64(low_a)]
         out_channels[np.uint64(i)] = channels_b[np.uint64(low_b)] if is_b else channel
-        low_b += np.int64(is_b)
-        low_a += 1 - np.int64(is_b)
+        low_b += int(is_b)
+        low_a += 1 - int(is_b)
         a, b = times_a[np.uint64(high_a)], times_b[np.uint64(high_b)]
         is_a = b < a
         out_times[np.uint64(size - 1 - i)] = max(a, b)
         channel = channels_b[np.uint64(high_b)]
         out_channels[np.uint64(size - 1 - i)] = channels_a[np.uint64(high_a)] if is_a else channel
-        high_a -= np.int64(is_a)
-        high_b -= 1 - np.int64(is_a)
+        high_a -= int(is_a)
+        high_b -= 1 - int(is_a)
     if size % 2 == 1:
         a, b = times_a[low_a], times_b[low_b]
         out_times[size // 2] = min(a, b)

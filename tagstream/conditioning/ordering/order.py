@@ -120,14 +120,21 @@ def merged(
     chosen[np.concatenate(runs[:half])] = 1
     size = times_ps.size
     room = [(np.empty(size + 2, np.int64), np.empty(size + 2, np.uint8)) for _ in range(2)]
-    first = fill_apart(times_ps, channels, chosen, *room[0], *room[1])
-    sides = []
-    for (times, names), count, part in zip(
-        room, (first, size - first), (runs[:half], runs[half:]), strict=True
+    (times_a, channels_a), (times_b, channels_b) = room
+    a = fill_apart(times_ps, channels, chosen, times_a, channels_a, times_b, channels_b)
+    b = size - a
+    for times, names, part in (
+        (times_a[1 : a + 1], channels_a[1 : a + 1], runs[:half]),
+        (times_b[1 : b + 1], channels_b[1 : b + 1], runs[half:]),
     ):
-        inner = slice(1, count + 1)
-        times[inner], names[inner] = merged(times[inner], names[inner], part)
-        sides += [times[: count + 2], names[: count + 2]]
-    out = np.empty(size, np.int64), np.empty(size, np.uint8)
-    fill_merged(*sides, *out)
-    return out
+        times[:], names[:] = merged(times, names, part)
+    out_times, out_channels = np.empty(size, np.int64), np.empty(size, np.uint8)
+    fill_merged(
+        times_a[: a + 2],
+        channels_a[: a + 2],
+        times_b[: b + 2],
+        channels_b[: b + 2],
+        out_times,
+        out_channels,
+    )
+    return out_times, out_channels
