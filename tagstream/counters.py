@@ -6,7 +6,9 @@ decided; tags that still wait to be put in order are `in_flight`.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 DROP_REASONS = (
     "late",
@@ -40,6 +42,37 @@ class Counters:
         """Tags whose fate is decided: kept or dropped."""
         return self.arrived - self.in_flight
 
+    def plus(self, other: Counters) -> Counters:
+        """Both added up; the largest disorder is the larger one."""
+        return Counters(
+            self.arrived + other.arrived,
+            self.in_flight + other.in_flight,
+            self.kept + other.kept,
+            self.gaps + other.gaps,
+            self.gap_time_ps + other.gap_time_ps,
+            max(self.largest_disorder_ps, other.largest_disorder_ps),
+            {r: count + other.dropped.get(r, 0) for r, count in self.dropped.items()},
+        )
+
+    def negative(self) -> Counters:
+        """What takes these away when it is added."""
+        dropped = {reason: -count for reason, count in self.dropped.items()}
+        return Counters(
+            -self.arrived, -self.in_flight, -self.kept, -self.gaps, -self.gap_time_ps, 0, dropped
+        )
+
     def drop(self, reason: str, count: int) -> None:
         """Count `count` tags as dropped for `reason` (one of DROP_REASONS)."""
         self.dropped[reason] += count
+
+
+def counters_of(told: Mapping[str, Any]) -> Counters:
+    """Counters as `dataclasses.asdict` told them; nothing is in flight any more.
+
+    Tags that waited to be put in order when the process ended are lost: dropped, in a gap.
+    """
+    known = {name: value for name, value in told.items() if name in Counters.__slots__}
+    found = Counters(**{**known, "dropped": dict.fromkeys(DROP_REASONS, 0) | told["dropped"]})
+    found.drop("in_gap", found.in_flight)
+    found.in_flight = 0
+    return found

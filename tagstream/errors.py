@@ -38,3 +38,9 @@ class RunBusyError(TagstreamError):
     """Another process writes this run."""
 
     exit_code = 4
+
+
+class ControlError(TagstreamError):
+    """A run did not answer a request, or refused it."""
+
+    exit_code = 1

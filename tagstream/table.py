@@ -10,6 +10,7 @@ from textwrap import wrap
 from typing import Any
 
 from tagstream.estimates import Estimate
+from tagstream.marks import value_text
 from tagstream.outputs.reader import Run
 
 WIDTH = 100
@@ -22,7 +23,7 @@ def format_run(run: Run) -> str:
     lines = [*_head(run), ""]
     for name, spans in estimates.items():
         lines += [*_estimate_lines(name, dict(spans)), ""]
-    lines += [*_channel_lines(run), "", *_health_lines(run.health)]
+    lines += [*_split_lines(run), *_channel_lines(run), "", *_health_lines(run.health)]
     if truth := run.truth:
         width = max(map(len, truth))
         lines += ["", "known truth of the simulation"]
@@ -44,6 +45,10 @@ def as_json(run: Run) -> dict[str, Any]:
             name: {span: _plain(found) for span, found in spans.items()}
             for name, spans in run.channels.items()
         },
+        "splits": {
+            name: {"key": k, "values": _parts(run, name)} for name, k in run.split_keys.items()
+        },
+        "marks": {mark.key: mark.value for mark in run.marks},
         "health": _plain(run.health),
         "truth": _plain(run.truth),
     }
@@ -110,6 +115,27 @@ def _channel_lines(run: Run) -> Iterator[str]:
         rates = [f"{_rate(found[span]['rate_hz']):>18}" for span in spans]
         total = f"{found['run']['counts']:>20}" if "run" in found else ""
         yield f"{name:<{width}}{''.join(rates)}{total}"
+
+
+def _split_lines(run: Run) -> Iterator[str]:
+    """Of each tally that is split: what its values hold."""
+    for name, key in run.split_keys.items():
+        yield f"{name}, apart for each value of {key}"
+        for part in _parts(run, name):
+            value, live_s = value_text(part["value"]), part["live_time_s"]
+            yield f"  {value:<24} {part['pairs']:>14} pairs in {live_s:.6g} s of live time"
+        yield ""
+
+
+def _parts(run: Run, tally: str) -> list[dict[str, Any]]:
+    return [
+        {
+            "value": value,
+            "pairs": int(arrays["counts"].sum()),
+            "live_time_s": float(arrays["live_time_s"]),
+        }
+        for value, arrays in run.split(tally).items()
+    ]
 
 
 def _rate(rate_hz: float) -> str:

@@ -72,6 +72,9 @@ class SinkInThread:
     def replace_snapshot(self, snapshot: Snapshot) -> None:
         self._snapshot = self._call(self._sink.replace_snapshot, snapshot)
 
+    def renew(self, header: RunHeader) -> None:
+        self._call(self._sink.renew, header)
+
     def event(self, name: str, stream_ps: int | None = None, **fields: Any) -> None:
         self._call(lambda: self._sink.event(name, stream_ps, **fields))
 

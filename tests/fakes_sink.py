@@ -7,7 +7,7 @@ from typing import Any
 from tagstream.conditioning import conditioned
 from tagstream.feeds import Feed
 from tagstream.outputs import Row, RunHeader, Snapshot
-from tagstream.pipeline import Pipeline, State
+from tagstream.pipeline import Pipeline, State, first_of
 from tagstream.settings import Settings
 
 
@@ -29,6 +29,9 @@ class MemorySink:
     def replace_snapshot(self, snapshot: Snapshot) -> None:
         self.snapshots.append(snapshot)
 
+    def renew(self, header: RunHeader) -> None:
+        self.header = header
+
     def event(self, name: str, stream_ps: int | None = None, **fields: Any) -> None:
         self.events.append((name, fields))
 
@@ -44,7 +47,8 @@ def run_in_memory(settings: Settings, feed: Feed) -> MemorySink:
         sinks.append(MemorySink(header))
         return sinks[0]
 
-    pipeline = Pipeline(settings, "", feed, conditioned(feed.pieces(), settings), open_sink)
+    stream = conditioned(feed.pieces(), settings)
+    pipeline = Pipeline(settings, "", feed, stream, open_sink, first=first_of(stream))
     while pipeline.step():
         pass
     pipeline.finish(State.FINISHED)

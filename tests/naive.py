@@ -187,7 +187,9 @@ def bits(record: int, field: tuple[int, int]) -> int:
 def decoded(data: bytes, layout: Any) -> tuple[list[tuple[int, int, bool]], bool]:
     """((ticks, input, whether a gap came just before) of each tag, whether a gap came last)."""
     tags: list[tuple[int, int, bool]] = []
-    epoch, gap = 0, False
+    epoch, gap, most = 0, False, 2**63 - 1
+    last: int | None = None
+    span = 2 ** layout.time_bits[1]
     for at in range(0, len(data) - layout.record_bytes + 1, layout.record_bytes):
         record = int.from_bytes(data[at : at + layout.record_bytes], layout.byte_order)
         matching = [
@@ -196,15 +198,31 @@ def decoded(data: bytes, layout: Any) -> tuple[list[tuple[int, int, bool]], bool
             if all(bits(record, (first, n)) == value for first, n, value in marker.conditions)
         ]
         if not matching:
-            tick = min(epoch + bits(record, layout.time_bits), 2**63 - 1)
+            time = bits(record, layout.time_bits)
+            if layout.wrap == "implicit" and last is not None and abs(time - last) > span // 2:
+                epoch = max(min(epoch + (span if time < last else -span), most), -most)
+            last = time
+            tick = fine_tick(min(epoch + time, most), record, layout)
             tags.append((tick, bits(record, layout.channel_bits), gap))
             gap = False
         elif matching[0].means == "rollover":
             count = 1 if matching[0].count is None else bits(record, matching[0].count)
-            epoch = min(epoch + count * (matching[0].step or 2 ** layout.time_bits[1]), 2**63 - 1)
+            epoch = min(epoch + count * (matching[0].step or span), most)
         elif matching[0].means == "gap":
             gap = True
     return tags, gap
+
+
+def fine_tick(count: int, record: int, layout: Any) -> int:
+    """A count of the time field in native ticks, with the fine time of its record."""
+    most = 2**63 - 1
+    if layout.fine is None or count == most:
+        return count
+    sign = 1 if layout.fine.sign == "+" else -1
+    time_ps = count * layout.tick_ps + sign * bits(record, layout.fine.bits) * layout.fine.tick_ps
+    ticks = time_ps / layout.native_tick_ps
+    assert ticks.denominator == 1
+    return max(min(int(ticks), most), -most)
 
 
 def csv_rows(text: str, time_column: str, channel_column: str) -> list[tuple[int, int]]:

@@ -18,6 +18,7 @@ SHARED = {
     "errors",
     "marks",
     "recording",
+    "security",
     "settings",
     "simulation",
     "units",

@@ -13,11 +13,13 @@ from typing import Any
 import pytest
 
 from tagstream import table as module
+from tagstream.outputs import SplitView
 from tagstream.outputs.folder import RunFolder
 from tagstream.outputs.reader import Run, open_run
 from tagstream.outputs.run_writer import RunWriter
+from tagstream.recording.layout import Mark
 from tagstream.table import WIDTH, as_json, format_estimate, format_run
-from tests.fakes_outputs import make_estimate, make_header, make_row, make_snapshot
+from tests.fakes_outputs import make_estimate, make_header, make_row, make_snapshot, make_tally
 
 FINISHED = """\
 a run made by hand: running
@@ -65,6 +67,28 @@ def run(tmp_path: Path) -> Run:
 
 def test_a_finished_run_word_by_word(run: Run) -> None:
     assert format_run(run) == FINISHED.format(folder=run.path)
+
+
+def test_a_split_tally_is_told_value_by_value(tmp_path: Path) -> None:
+    tallies = {"hbt": {"kind": "cross-correlation", "split_by": "power"}}
+    parts = {value: make_tally(11) for value in ("unmarked", 0.25)}
+    marks = (Mark(3, "power", 0.5), Mark(5, "filter", "grey"), Mark(9, "power", 0.25))
+    snapshot = replace(
+        make_snapshot(), splits={"hbt": SplitView("power", 0.25, parts)}, marks=marks
+    )
+    write(tmp_path, tallies=tallies).close(snapshot)
+    run = open_run(tmp_path / "run")
+    lines = format_run(run).splitlines()
+    first = lines.index("hbt, apart for each value of power")
+    assert [line.split() for line in lines[first + 1 : first + 4]] == [
+        ["unmarked", "90", "pairs", "in", "1", "s", "of", "live", "time"],
+        ["0.25", "90", "pairs", "in", "1", "s", "of", "live", "time"],
+        [],
+    ]
+    plain = json.loads(json.dumps(as_json(run)))
+    assert plain["marks"] == {"power": 0.25, "filter": "grey"}
+    assert plain["splits"]["hbt"]["key"] == "power"
+    assert plain["splits"]["hbt"]["values"][1] == {"value": 0.25, "pairs": 90, "live_time_s": 1.0}
 
 
 def test_a_run_without_a_title_is_called_by_its_folder(tmp_path: Path) -> None:
@@ -177,7 +201,8 @@ def test_limits_and_missing_numbers() -> None:
 
 def test_json_holds_the_same_without_rounding(run: Run) -> None:
     told = json.loads(json.dumps(as_json(run), allow_nan=False))
-    assert set(told) == {"run", "live", "about", "estimates", "channels", "health", "truth"}
+    measured = {"estimates", "channels", "splits", "marks", "health"}
+    assert set(told) == {"run", "live", "about", "truth"} | measured
     assert told["run"] == str(run.path)
     found = told["estimates"]["g2_zero"]
     assert (found["run"]["value"], found["run"]["upper"]) == (0.1, 1 / 9)

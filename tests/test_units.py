@@ -111,3 +111,12 @@ def test_the_origin_is_the_slice_of_the_first_tag() -> None:
 def test_a_tick_too_fine_for_exact_products_is_refused() -> None:
     with pytest.raises(ValueError, match="below"):
         TickScale(Fraction(2**40, 2**30 + 1), 0, 10**12)
+
+
+@pytest.mark.parametrize("tick", TICKS)
+def test_a_scale_that_is_moved_gives_later_times_as_exactly(tick: Fraction) -> None:
+    scale = TickScale(tick, 10**9, 10**12)
+    counts = np.arange(10**9, 10**9 + 100, dtype=np.int64)
+    days = 105 * 86_400 * 10**12
+    assert np.array_equal(scale.moved(days + 1).to_ps(counts), scale.to_ps(counts) + days + 1)
+    assert scale.moved(5).moved(-5) == scale

@@ -11,15 +11,23 @@ import click
 from tagstream._version import __version__
 from tagstream.errors import SettingsError, TagstreamError
 
-# verb -> what it does; its command is `command` in tagstream.cli.<verb>
+# verb -> what it does; its command is `command` in tagstream.cli.<verb>, with _ for -
 VERBS = {
     "run": "Feed to results until the feed ends or a stop is asked for.",
     "replay": "The same from recordings, as fast as it can.",
     "check": "Tell every error of the settings; start nothing.",
     "simulate": "Make a recording of simulated light with known truth.",
+    "send": "Play recordings to an address, as a sender of tags would.",
     "show": "The numbers of a run, live or finished.",
     "watch": "The same numbers live in the terminal.",
+    "recover": "Mend what a crashed process left in a run.",
     "plot": "Pictures of histograms and histories.",
+    "status": "Ask a live run how it is.",
+    "mark": "Tell a live run that from now on a key has a value.",
+    "restart-spans": "Let the spans of a live run begin anew.",
+    "new-run": "Let a live run end, and the next one begin.",
+    "stop": "Let a live run end cleanly.",
+    "keys": "Make keys for sockets that others can reach.",
 }
 
 
@@ -32,7 +40,8 @@ class LazyGroup(click.Group):
     def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
         if cmd_name not in VERBS:
             return None
-        command: click.Command = import_module(f"tagstream.cli.{cmd_name}").command
+        module = cmd_name.replace("-", "_")
+        command: click.Command = import_module(f"tagstream.cli.{module}").command
         return command
 
     def invoke(self, ctx: click.Context) -> object:

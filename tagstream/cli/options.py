@@ -8,7 +8,26 @@ from typing import Any, TypeVar
 
 import click
 
+from tagstream.units import parse_time
+
 F = TypeVar("F", bound=Callable[..., Any])
+
+
+class Duration(click.ParamType[int]):
+    """A time with a unit, such as "20 s", in ps."""
+
+    name = "time"
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> int:
+        if isinstance(value, int):
+            return value
+        try:
+            ps = int(parse_time(value))
+        except ValueError as error:
+            self.fail(f'"{value}"; right would be {error}', param, ctx)
+        if ps <= 0:
+            self.fail(f'"{value}"; right would be a time longer than zero', param, ctx)
+        return ps
 
 
 def settings_argument(function: F) -> F:
@@ -51,3 +70,17 @@ def pace_option(function: F) -> F:
 def name_option(function: F) -> F:
     """--name."""
     return click.option("--name", help="Name of the run, in place of [results] name.")(function)
+
+
+def asked_run_argument(function: F) -> F:
+    """RUN, a run folder, the link to the newest one, or the address of its control socket."""
+    return click.argument("run")(function)
+
+
+def keys_option(function: F) -> F:
+    """--keys, for requests over the network."""
+    return click.option(
+        "--keys",
+        type=click.Path(path_type=Path),
+        help="Folder with the keys of this side; absent: the one that RUN names, if it needs any.",
+    )(function)

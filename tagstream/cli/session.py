@@ -6,14 +6,17 @@ import json
 import sys
 import time
 from contextlib import nullcontext
+from pathlib import Path
 from typing import Any
 
 import click
 
 from tagstream.errors import TagstreamError
-from tagstream.launch import Plan, started
+from tagstream.launch import Plan, Started, started
 from tagstream.pipeline import Pipeline
-from tagstream.service import StopRequest, run_to_end
+from tagstream.service import StopRequest, supervise
+from tagstream.supervision.service_manager import ServiceManager
+from tagstream.supervision.watch import Watch
 
 BAR_LENGTH = 1000  # steps of the progress bar, which shows a fraction
 
@@ -23,29 +26,35 @@ def conduct(plan: Plan, as_json: bool) -> None:
 
     Raises SystemExit with 128 + signal after a stop, and what the run raised.
     """
-    stop = StopRequest()
+    stop, manager = StopRequest(), ServiceManager()
     stop.install()
     for text in plan.loaded.warnings:
         click.echo(f"warning: {text}", err=True)
+    manager.starting()
     with started(plan, stop) as run:
-        pipeline, folder = run.pipeline, run.folder
         if not as_json:
-            click.echo(f"results in {folder.path}")
+            click.echo(f"results in {run.sinks.folder}")
         try:
-            with _progress(pipeline) as bar:
-                run_to_end(pipeline, stop, lambda: _advance(bar, pipeline))
+            _look_after(plan, run, stop, manager)
         except TagstreamError:
-            _report(folder.path, as_json)
+            _report(run.sinks.folder, as_json)
             raise
         seconds = time.monotonic() - run.began_s
     if not as_json:
-        click.echo(_speed(pipeline.counters.received, seconds))
-    _report(folder.path, as_json)
+        click.echo(_speed(run.loop.pipeline.counters.received, seconds))
+    _report(run.sinks.folder, as_json)
     if stop.requested:
         raise SystemExit(stop.exit_code)
 
 
-def _report(folder: Any, as_json: bool) -> None:
+def _look_after(plan: Plan, run: Started, stop: StopRequest, manager: ServiceManager) -> None:
+    """Until the feed ends or a stop was asked for and everything is written."""
+    with Watch(plan, run, stop, manager) as watch, _progress(run.loop.pipeline) as bar:
+        counting = run.threads.counting.submit(run.loop.run_to_end, stop)
+        supervise(counting, [watch.look, lambda: _advance(bar, run.loop.pipeline)])
+
+
+def _report(folder: Path, as_json: bool) -> None:
     from tagstream.outputs.reader import open_run
     from tagstream.table import as_json as run_as_json
     from tagstream.table import format_run

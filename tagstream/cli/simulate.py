@@ -4,29 +4,11 @@ from __future__ import annotations
 
 import json
 from pathlib import Path
-from typing import Any
 
 import click
 
-from tagstream.cli.options import json_option
-from tagstream.units import PS_PER_S, parse_time
-
-
-class Duration(click.ParamType[int]):
-    """A time with a unit, such as "20 s", in ps."""
-
-    name = "time"
-
-    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> int:
-        if isinstance(value, int):
-            return value
-        try:
-            ps = int(parse_time(value))
-        except ValueError as error:
-            self.fail(f'"{value}"; right would be {error}', param, ctx)
-        if ps <= 0:
-            self.fail(f'"{value}"; right would be a time longer than zero', param, ctx)
-        return ps
+from tagstream.cli.options import Duration, json_option
+from tagstream.units import PS_PER_S
 
 
 @click.command()

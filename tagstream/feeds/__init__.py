@@ -135,6 +135,7 @@ _LIVE_KINDS = {
     "zmq": "tagstream.feeds.messages_feed:MessagesFeed",
     "tcp": "tagstream.feeds.tcp:TcpFeed",
     "stdin": "tagstream.feeds.stdin:StdinFeed",
+    "records": "tagstream.feeds.growing:GrowingFeed",
 }
 
 

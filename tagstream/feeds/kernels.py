@@ -16,11 +16,15 @@ from tagstream.compiled import kernel
 INT64_MAX = 2**63 - 1
 
 # Slots of the state of `fill_decoded`, int64.
-EPOCH, KEPT, GAP = range(3)
-STATE_SIZE = 3
-# Columns of its table of fields: value = (low >> shift_low & mask_low)
-#                                        | (high >> shift_high & mask_high) << up
-SHIFT_LOW, MASK_LOW, SHIFT_HIGH, MASK_HIGH, UP = range(5)
+EPOCH, KEPT, GAP, LAST = range(4)
+STATE_SIZE = 4
+NO_LAST = -1  # in LAST: no tag came yet
+# Rows of its table of fields.
+TIME, CHANNEL, FINE = range(3)
+# Its columns: value = (low >> shift_low & mask_low) | (high >> shift_high & mask_high) << up.
+# FACTOR: ticks in a count, signed. RANGE, of the time: counts after which it begins again
+# without a marker, or 0.
+SHIFT_LOW, MASK_LOW, SHIFT_HIGH, MASK_HIGH, UP, FACTOR, RANGE = range(7)
 # Columns of its table of markers; a field follows from COUNT on.
 MEANING, BITS_LOW, VALUE_LOW, BITS_HIGH, VALUE_HIGH, STEP, ONCE, COUNT = range(8)
 ROLLOVER, LOST, SKIP = range(3)
@@ -55,11 +59,25 @@ def fill_words(
 
 @kernel
 def _field_value(low: np.int64, high: np.int64, field: NDArray[np.int64]) -> np.int64:
-    """The unsigned value, at most 63 bits, of a field of a record. field: int64, 5 columns."""
+    """The unsigned value, at most 63 bits, of a field of a record. field: int64, from 5 on."""
     part: np.int64 = (low >> field[SHIFT_LOW]) & field[MASK_LOW]
     rest: np.int64 = (high >> field[SHIFT_HIGH]) & field[MASK_HIGH]
     value: np.int64 = part | (rest << field[UP])
     return value
+
+
+@kernel
+def _scaled(count: np.int64, factor: np.int64, fine: np.int64) -> np.int64:
+    """count * factor + fine within +-(2**63 - 1); a count that is not stays so. |fine| < 2**62."""
+    most = np.int64(INT64_MAX)
+    reach = (most >> np.int64(1)) // factor
+    if -reach <= count <= reach:
+        return count * factor + fine
+    if count == most or count > (most - max(fine, np.int64(0))) // factor:
+        return most
+    if count < -((most + min(fine, np.int64(0))) // factor):
+        return -most
+    return count * factor + fine
 
 
 @kernel
@@ -75,15 +93,22 @@ def fill_decoded(
     """Decode records up to the first gap that has tags before it; return how many were used.
 
     low, high: int64, n; the halves of each record; `high` may be empty where records are no
-    longer than 8 bytes. fields: int64, 2 x 5, time and channel. markers: int64, m x 12; the first
-    that matches a record says what it means, and a record that matches none is a tag.
-    state: [epoch, tags written by this call, whether a gap comes before them]; epoch and gap
-    are carried from call to call. ticks, inputs: at least n long.
+    longer than 8 bytes. fields: int64, 3 x 7, time, channel and fine time. markers: int64, m x 12;
+    the first that matches a record says what it means, and a record that matches none is a tag.
+    state: [epoch, tags written by this call, whether a gap comes before them, count of the last
+    tag]; all but the second are carried from call to call. ticks, inputs: at least n long.
 
-    A sum past int64 stays at 2**63 - 1. Cost: one pass.
+    Epoch and time are counts of the time field until they are added. Without markers a count
+    is taken to be less than half the range from the last one, so the epoch moves by a range
+    forwards, or back when a tag of before the wrap comes late. A sum past int64 stays at
+    2**63 - 1; fine times reach no further than 2**62. Cost: one pass.
     """
     most = np.int64(INT64_MAX)
+    factor = fields[TIME, FACTOR]
+    fine_factor = fields[FINE, FACTOR]
+    span = fields[TIME, RANGE]
     epoch = state[EPOCH]
+    last = state[LAST]
     kept = 0
     used = low.size
     for i in range(low.size):
@@ -102,9 +127,19 @@ def fill_decoded(
                         epoch = most if row[STEP] > room else epoch + count * row[STEP]
                 break
         if meaning == -1:
-            time = _field_value(low[i], upper, fields[0])
-            ticks[kept] = most if time > most - epoch else epoch + time
-            inputs[kept] = _field_value(low[i], upper, fields[1])
+            time = _field_value(low[i], upper, fields[TIME])
+            if span > 0:
+                if last != NO_LAST and last - time > span // 2:
+                    epoch = epoch + span if epoch <= most - span else most
+                elif last != NO_LAST and time - last > span // 2:
+                    epoch = epoch - span if epoch >= span - most else -most
+                last = time
+            tick = most if time > most - epoch and epoch > 0 else epoch + time
+            if fine_factor != 0:
+                fine = fine_factor * _field_value(low[i], upper, fields[FINE])
+                tick = _scaled(tick, factor, fine)
+            ticks[kept] = tick
+            inputs[kept] = _field_value(low[i], upper, fields[CHANNEL])
             kept += 1
         elif meaning == LOST:
             if kept > 0:
@@ -113,6 +148,7 @@ def fill_decoded(
             state[GAP] = 1
     state[EPOCH] = epoch
     state[KEPT] = kept
+    state[LAST] = last
     return used
 
 

@@ -8,7 +8,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from tagstream.feeds import Arrivals
+from tagstream.feeds import IDLE, IDLE_S, Arrivals
 from tagstream.units import PS_PER_S
 
 STEP_S = 0.1  # pieces are cut so that none waits longer than this for its own last tag
@@ -20,7 +20,7 @@ def paced(
     wait: Callable[[float], bool],
     clock: Callable[[], float] = time.monotonic,
 ) -> Generator[Arrivals]:
-    """The pieces of a feed, cut small, each when its time has come.
+    """The pieces of a feed, cut small, each when its time has come; until then IDLE.
 
     pace: seconds of stream time per second of wall time. wait: sleeps for so many seconds; may
     return early, and returns True when waiting makes no sense any more (a stop).
@@ -35,8 +35,9 @@ def paced(
                 first_ps = last_ps
             due = started + (last_ps - first_ps) / PS_PER_S / pace
             while (left := due - clock()) > 0:
-                if wait(left):
+                if wait(min(left, IDLE_S)):
                     break
+                yield IDLE
             yield piece
 
 

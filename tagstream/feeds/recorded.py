@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Generator, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from tagstream import units
 from tagstream.errors import InputError, SettingsError
 from tagstream.feeds import Arrivals, TimeBase
-from tagstream.recording import RecordedPiece, RecordingHeader, RecordingReader
+from tagstream.recording import Mark, RecordedPiece, RecordingHeader, RecordingReader
 from tagstream.settings.feeds import RecordingFeed as RecordingSettings
 
 
@@ -48,12 +48,13 @@ class RecordingsFeed:
         for number, segment in enumerate(self._segments):
             gap |= number > 0 and segment.header.segment != self._number(number - 1) + 1
             with RecordingReader(segment.path, self._group) as reader:
+                marks = reader.marks()
                 for piece in reader.pieces():
                     self._delivered += piece.times_ps.size
                     if not self._placed(piece):
                         continue
-                    yield self._arrivals(piece, gap)
-                    gap = False
+                    yield self._arrivals(piece, gap, marks)
+                    gap, marks = False, []
         if self._shift is None:
             raise InputError(f"{self._segments[0].path}: holds no tags and no intervals")
 
@@ -71,7 +72,8 @@ class RecordingsFeed:
             self._shift = units.TickScale(Fraction(1), first, self._slice_ps)
         return True
 
-    def _arrivals(self, piece: RecordedPiece, gap: bool) -> Arrivals:
+    def _arrivals(self, piece: RecordedPiece, gap: bool, marks: list[Mark]) -> Arrivals:
+        """The first piece of a segment carries its marks; they wait for their time."""
         return Arrivals(
             self._moved(piece.times_ps),
             piece.inputs,
@@ -80,6 +82,7 @@ class RecordingsFeed:
             piece.complete,
             piece.gap_before or gap,
             piece.lossy,
+            marks=tuple(replace(m, time_ps=m.time_ps - self._origin_ps) for m in marks),
         )
 
     @property

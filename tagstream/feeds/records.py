@@ -9,6 +9,8 @@ from __future__ import annotations
 
 import sys
 from collections.abc import Iterator
+from dataclasses import dataclass
+from fractions import Fraction
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,7 +20,9 @@ from tagstream.feeds import PIECE_TAGS
 from tagstream.feeds.kernels import (
     GAP,
     KEPT,
+    LAST,
     LOST,
+    NO_LAST,
     ROLLOVER,
     SKIP,
     STATE_SIZE,
@@ -44,9 +48,7 @@ class RecordDecoder:
     def __init__(self, layout: RecordLayout) -> None:
         self._layout = layout
         self._plain = layout.record_bytes == 8 and layout.byte_order == "little"
-        self._fields = np.array(
-            [_field_row(layout.time_bits), _field_row(layout.channel_bits)], np.int64
-        )
+        self._fields = _field_rows(layout)
         rows = [
             _marker_row(marker, number, layout.time_bits[1])
             for number, marker in enumerate(layout.markers, 1)
@@ -54,6 +56,7 @@ class RecordDecoder:
         self._markers = np.array(rows, np.int64).reshape(len(rows), 12)
         self._input_dtype = np.uint8 if layout.channel_bits[1] <= 8 else np.uint16
         self._state = np.zeros(STATE_SIZE, np.int64)
+        self._state[LAST] = NO_LAST
         self._rest = b""
 
     @property
@@ -144,11 +147,37 @@ class RecordsFile:
         return min((self._settings.skip_bytes + self._read) / self._size, 1.0)
 
 
+@dataclass(frozen=True, slots=True)
+class _Clock:
+    """What the ticks of decoded records mean."""
+
+    tick_ps: Fraction
+    begin_ps: int | None
+    end_ps: int | None
+
+    @classmethod
+    def of(cls, settings: RecordsSettings) -> _Clock:
+        return cls(settings.native_tick_ps, settings.begin_ps, settings.end_ps)
+
+
 class RecordsFeed(TickFeed):
     """A file of records, as the [feed] section describes it."""
 
     def __init__(self, settings: RecordsSettings, slice_ps: int) -> None:
-        super().__init__(RecordsFile(settings), settings, slice_ps)
+        super().__init__(RecordsFile(settings), _Clock.of(settings), slice_ps)
+
+
+def _field_rows(layout: RecordLayout) -> NDArray[np.int64]:
+    """The table of fields of the decoding kernel."""
+    coarse, fine = layout.factors
+    after = 2 ** layout.time_bits[1] if layout.wrap == "implicit" else 0
+    fine_row = _NO_FIELD if layout.fine is None else _field_row(layout.fine.bits)
+    rows = [
+        [*_field_row(layout.time_bits), coarse, after],
+        [*_field_row(layout.channel_bits), 0, 0],
+        [*fine_row, fine, 0],
+    ]
+    return np.array(rows, np.int64)
 
 
 def _field_row(field: BitField) -> list[int]:

@@ -1,4 +1,4 @@
-"""Simulated tags as a feed, with the truth about them."""
+"""Simulated tags and marks as a feed, with the truth about them."""
 
 from __future__ import annotations
 
@@ -28,7 +28,9 @@ class SimulationFeed:
         """Contiguous pieces in time order, from 0 to the duration exactly."""
         for piece in simulate_pieces(self._scenario, self._seed, self._duration_ps):
             self._done_ps = piece.end_ps
-            yield Arrivals(piece.times_ps, piece.inputs, piece.begin_ps, piece.end_ps)
+            yield Arrivals(
+                piece.times_ps, piece.inputs, piece.begin_ps, piece.end_ps, marks=piece.marks
+            )
 
     @property
     def time_base(self) -> TimeBase:
@@ -38,7 +40,7 @@ class SimulationFeed:
     @property
     def truth(self) -> dict[str, Any]:
         """What a right analysis finds (simulation.truth), and the seed."""
-        return {**truth(self._scenario), "seed": self._seed}
+        return {**truth(self._scenario, self._duration_ps), "seed": self._seed}
 
     @property
     def progress(self) -> float:

@@ -13,6 +13,7 @@ from typing import Any, Protocol
 from numpy.typing import NDArray
 
 from tagstream.estimates import Estimate
+from tagstream.recording.layout import Mark
 
 Arrays = Mapping[str, NDArray[Any]]
 
@@ -79,26 +80,69 @@ class SpanView:
 
 
 @dataclass(frozen=True, slots=True)
+class SplitView:
+    """A tally over the whole run, apart for each value of a key of marks.
+
+    now: the value in force. parts: value -> arrays as in `SpanView.tallies`, in the order in
+        which values were first in force.
+    """
+
+    key: str
+    now: float | str
+    parts: Mapping[float | str, Arrays]
+
+
+@dataclass(frozen=True, slots=True)
+class GoingOn:
+    """What a snapshot carries for a later start.
+
+    singles: sums of the tally that every run has. first_slice, next_slice: of the run.
+    counters: by name. position: of the feed, anything that JSON can hold.
+    """
+
+    singles: Arrays
+    first_slice: int
+    next_slice: int
+    counters: Mapping[str, Any]
+    position: Mapping[str, Any]
+
+
+@dataclass(frozen=True, slots=True)
 class Snapshot:
     """All that a monitor needs now.
 
     estimates: as in `Row`. health: received, kept, dropped_<reason>, gaps, gap_time_ps,
         backlog_blocks, lag_behind_s, last_tag_ps, state and the like; int, float or str.
+    splits: by name of tally, those that are split. marks: the newest, in the order in which they
+        were set.
+    arrived_s: when the oldest tag arrived that no snapshot before has shown, monotonic clock;
+        None where nothing new is shown, or tags do not arrive live.
+    going_on: what a later start needs; None before the first slice has ended.
     """
 
     spans: tuple[SpanView, ...]
     estimates: Mapping[str, tuple[Estimate, ...]]
     health: Mapping[str, int | float | str]
+    splits: Mapping[str, SplitView] = field(default_factory=dict)
+    marks: tuple[Mark, ...] = ()
+    arrived_s: float | None = None
+    going_on: GoingOn | None = None
 
 
 class Sink(Protocol):
-    """Takes what the pipeline has to say, in stream order, in one thread."""
+    """Takes what the pipeline has to say, in stream order, in one thread.
+
+    `renew`: more is known of the run than when it began, or its estimates are others now; rows
+    that follow are of the new header.
+    """
 
     def add_row(self, row: Row) -> None: ...
 
     def snapshot_due(self) -> bool: ...
 
     def replace_snapshot(self, snapshot: Snapshot) -> None: ...
+
+    def renew(self, header: RunHeader) -> None: ...
 
     def event(self, name: str, stream_ps: int | None = None, **fields: Any) -> None: ...
 

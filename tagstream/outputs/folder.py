@@ -168,6 +168,11 @@ def _make_next(parent: Path, name: str) -> Path:
     )
 
 
+def newest_run(parent: Path, name: str) -> Path | None:
+    """The newest run of that name that holds results."""
+    return _newest(parent, name) if parent.is_dir() else None
+
+
 def _point(run: Path, name: str) -> None:
     """Let the link point to the newest run, replacing an older link at once.
 

@@ -65,6 +65,11 @@ class History:
             fresh.unlink(missing_ok=True)
             raise cannot_write(path, error) from error
 
+    @property
+    def broken(self) -> bool:
+        """Whether a write failed, so that the file takes nothing more."""
+        return not self._open
+
     def add(self, row: Row) -> None:
         """Take a row; flush when a batch is full or the last flush is a while ago."""
         if not self._open:

@@ -6,7 +6,6 @@ Superblock 2 (libver v108), so that any HDF5 program opens it. The layout is in 
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Any
 
 import h5py
 import numpy as np
@@ -14,11 +13,16 @@ import numpy as np
 from tagstream.estimates import Estimate
 from tagstream.outputs import Arrays, RunHeader, Snapshot, SpanView
 from tagstream.outputs import layout as at
+from tagstream.outputs.histogram import write_histogram
+from tagstream.outputs.marked import write_marks, write_splits
+from tagstream.outputs.nodes import TEXT
+from tagstream.outputs.nodes import make_group as _group
+from tagstream.outputs.nodes import put as _put
+from tagstream.outputs.nodes import put_texts as _put_texts
 from tagstream.outputs.recent import RecentValues
-from tagstream.settings.measures import DEFAULT_LEVEL
+from tagstream.outputs.resume import write_going_on
 from tagstream.units import PS_PER_S
 
-TEXT = h5py.string_dtype("utf-8")
 Meta = Mapping[str, str | int]
 
 
@@ -38,6 +42,11 @@ def latest_image(header: RunHeader, meta: Meta, snapshot: Snapshot, recent: Rece
         for span in snapshot.spans:
             for tally, arrays in span.tallies.items():
                 _write_tally(entry, header, span, tally, arrays)
+        write_splits(entry, snapshot.splits)
+        if snapshot.going_on is not None:
+            write_going_on(entry, snapshot.going_on)
+        if snapshot.marks:
+            write_marks(entry, snapshot.marks, header.origin_utc)
         _write_estimates(_group(entry, at.ESTIMATES, "NXcollection"), header, snapshot, recent)
         _write_channels(_group(entry, at.CHANNELS, "NXcollection"), header, snapshot)
         _write_health(_group(entry, at.HEALTH, "NXcollection"), snapshot.health)
@@ -83,25 +92,9 @@ def _write_tally(
     entry: h5py.Group, header: RunHeader, span: SpanView, tally: str, arrays: Arrays
 ) -> None:
     group = _group(entry, at.tally_group(tally, span.name), "NXdata")
-    run = entry[tally]  # the first span: its axes are shared by all
-    for name, values in arrays.items():
-        if name in ("lag", "lag_edges") and group != run:
-            group[name] = run[name]  # a hard link
-        else:
-            bins = arrays["counts"].size
-            full = np.broadcast_to(values, bins) if name == "pair_time_ps" else values
-            _put(group, name, full)
-    _put(group, "live_time_s", int(arrays["live_time_ps"]) / PS_PER_S)
+    write_histogram(group, entry[tally], arrays)  # the first span: its axes are shared by all
     _put(group, "begin_ps", span.begin_ps)
     _put(group, "end_ps", span.end_ps)
-    group["counts"].attrs["long_name"] = "pairs"
-    for name in ("g2", "g2_errors", "g2_lower", "g2_upper"):
-        group[name].attrs["units"] = "1"
-    group["g2_lower"].attrs["level"] = group["g2_upper"].attrs["level"] = DEFAULT_LEVEL
-    group.attrs["signal"] = "g2"
-    group.attrs["auxiliary_signals"] = np.array(["counts"], dtype=TEXT)
-    group.attrs["axes"] = np.array(["lag"], dtype=TEXT)
-    group.attrs["lag_indices"] = 0
     group.attrs["span"] = span.name
     group.attrs["title"] = " ".join((tally, "over", span.name))
     for name, text in header.tallies[tally].items():
@@ -176,26 +169,3 @@ def _write_health(group: h5py.Group, health: Mapping[str, int | float | str]) ->
         _put(group, name, value)
     if "gap_time_ps" in health:
         _put(group, "gap_time_s", int(health["gap_time_ps"]) / PS_PER_S)
-
-
-def _group(parent: h5py.Group, name: str, nx_class: str) -> h5py.Group:
-    group = parent.create_group(name)
-    group.attrs["NX_class"] = nx_class
-    return group
-
-
-def _put(group: h5py.Group, name: str, value: Any) -> None:
-    """A dataset with the unit and the label that `layout` knows for its name."""
-    if isinstance(value, str):
-        group.create_dataset(name, data=value, dtype=TEXT)
-        return
-    array = np.asarray(value)
-    dataset = group.create_dataset(name, data=array, dtype=array.dtype)
-    if unit := at.unit_of(name):
-        dataset.attrs["units"] = unit
-    if name in at.LONG_NAMES:
-        dataset.attrs["long_name"] = at.LONG_NAMES[name]
-
-
-def _put_texts(group: h5py.Group, name: str, texts: list[str]) -> None:
-    group.create_dataset(name, data=np.array(texts, dtype=object), dtype=TEXT)

@@ -6,6 +6,10 @@
     run_uuid, updated_utc, host, pid, tick, slice_ps, spans; if known origin_ticks, origin_utc,
     recorded_uuid (of the run that is replayed)
 /run/<tally>                  NXdata, span "run"; other spans /run/<tally>_<span>, as hbt_10s
+/run/<tally>/by_<key>         of a tally that is split by a key of marks: @key, @now (the value in
+    force); value (texts), number (float64, nan for texts), one entry for each value so far
+    <n>                       NXdata like the tally itself, over the whole run, of the n-th value
+                              (from 1): @value (number or text); axes are those of the tally
 /run/estimates/<estimate>     one entry per span in: spans, value, lower, upper, level, counts,
     interval, method, reason, note, raw_value, raw_lower, raw_upper; unit
     history                   NXdata: the value over the last hour, for the shortest span
@@ -13,6 +17,7 @@
 /run/channels/<channel>       per span: spans, begin_ps, end_ps, counts, rate_hz, live_time_ps,
     live_time_s
 /run/health                   counters and state, scalars
+/run/marks, /run/mark_table   the newest marks, as in a recording: logs by key, and one table
 /run/truth                    what a simulation knows, scalars
 """
 
@@ -62,6 +67,11 @@ def span_suffix(span: str) -> str:
 def tally_group(tally: str, span: str) -> str:
     """The group of a tally and span: "hbt", "hbt_10s"."""
     return tally if span == "run" else f"{tally}_{span_suffix(span)}"
+
+
+def split_group(key: str) -> str:
+    """The group, inside that of a tally, of its parts by value of `key`."""
+    return f"by_{key}"
 
 
 def integer_columns(channels: tuple[str, ...]) -> list[str]:

@@ -2,7 +2,11 @@
 
 Fixed fields: utc, level ("info" or "warning"), event, stream_ps (null if none). Events:
 start (a run began), warning (settings or tags that may surprise), gap (tags may have been lost;
-`gaps` counts them so far), end (with the health at the end, and `error` if there was one).
+`gaps` counts them so far), mark (`key`, `value`, in force from stream_ps), split_full (`tally` has
+as many values of `key` as it may keep apart; what comes beyond is "other"), alert_raised and
+alert_cleared (`number` of the section, `what`, `value`, `compared`, `bound`, `text`; see `alerts`),
+alert_command_failed (`number`, `error`), output_failed (`output`, such as "publish", whose first
+`error` this is), end (with the health at the end, and `error` if there was one).
 Gaps that follow each other within a second of wall time are folded into one line; `folded` says
 how many it stands for, the other fields are those of the last.
 """
@@ -11,6 +15,7 @@ from __future__ import annotations
 
 import contextlib
 import json
+import os
 from collections.abc import Callable
 from datetime import UTC, datetime
 from pathlib import Path
@@ -20,7 +25,11 @@ from tagstream.outputs.folder import cannot_write
 
 FOLDED_EVENTS = ("gap",)
 FOLD_S = 1.0
-_WARNINGS = ("warning", "gap")
+MOST_BYTES = 50_000_000  # then the log goes on in a new file; the old one is log-0001.jsonl ...
+_WARNINGS = (
+    *("warning", "gap", "split_full"),
+    *("alert_raised", "alert_command_failed", "output_failed"),
+)
 
 
 class EventLog:
@@ -35,6 +44,10 @@ class EventLog:
             self._file = path.open("a", encoding="utf-8", buffering=1)
         except OSError as error:
             raise cannot_write(path, error) from error
+
+    def begin_again(self) -> None:
+        """Try to write again after lines could not be written."""
+        self._broken = False
 
     def event(self, name: str, stream_ps: int | None, fields: dict[str, Any]) -> None:
         """Write one event, or fold it into the next line of its kind."""
@@ -79,6 +92,16 @@ class EventLog:
         }
         try:
             self._file.write(json.dumps(line, ensure_ascii=False) + "\n")
+            if self._file.tell() >= MOST_BYTES:
+                self._rotate()
         except OSError as error:
             self._broken = True
             raise cannot_write(self._path, error) from error
+
+    def _rotate(self) -> None:
+        number = 1
+        while (old := self._path.with_name(f"{self._path.stem}-{number:04d}.jsonl")).exists():
+            number += 1
+        self._file.close()
+        os.rename(self._path, old)
+        self._file = self._path.open("a", encoding="utf-8", buffering=1)

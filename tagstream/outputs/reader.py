@@ -16,8 +16,11 @@ from numpy.typing import NDArray
 
 from tagstream.errors import ResultsError
 from tagstream.estimates import Estimate
+from tagstream.marks import Value
 from tagstream.outputs import layout as at
 from tagstream.outputs.folder import is_held
+from tagstream.recording.layout import MARK_TABLE, Mark
+from tagstream.recording.marks import read_marks
 from tagstream.units import PS_PER_S
 
 T = TypeVar("T")
@@ -83,9 +86,34 @@ class Run:
                 if isinstance(group, h5py.Group) and "span" in group.attrs:
                     span = group.attrs["span"]
                     tally = name if span == "run" else name.removesuffix(f"_{at.span_suffix(span)}")
-                    arrays = {key: dataset[()] for key, dataset in group.items()}
+                    arrays = _arrays(group)
                     found.setdefault(tally, {})[span] = arrays
         return Named("tally", {name: Named("span", spans) for name, spans in found.items()})
+
+    def split(self, tally: str) -> dict[Value, dict[str, NDArray[Any]]]:
+        """value -> arrays over the whole run, of a tally that marks split.
+
+        A value is the number or text of a mark, "unmarked" before the first one, "other" for all
+        beyond the limit. Empty when the tally is not split. Raises KeyError for an unknown tally.
+        """
+        with self._latest() as entry:
+            known = Named("tally", dict.fromkeys(_tally_names(entry)))
+        known[tally]  # raises with the names that there are
+        with self._latest() as entry:
+            return dict(_parts(entry[tally]))
+
+    @property
+    def split_keys(self) -> dict[str, str]:
+        """name -> key of marks, of the tallies that are split."""
+        with self._latest() as entry:
+            keys = {name: entry[name].attrs.get("split_by") for name in _tally_names(entry)}
+            return {name: key for name, key in keys.items() if key is not None}
+
+    @property
+    def marks(self) -> list[Mark]:
+        """The newest marks in the order in which they were set; times are stream time."""
+        with self._latest() as entry:
+            return read_marks(entry[MARK_TABLE]) if MARK_TABLE in entry else []
 
     @property
     def channels(self) -> Named[Named[dict[str, Any]]]:
@@ -185,6 +213,25 @@ def _not_results(path: Path, error: BaseException) -> ResultsError:
     )
 
 
+def _tally_names(entry: h5py.Group) -> list[str]:
+    return [name for name, node in entry.items() if node.attrs.get("span") == "run"]
+
+
+def _arrays(group: h5py.Group) -> dict[str, NDArray[Any]]:
+    return {name: node[()] for name, node in group.items() if isinstance(node, h5py.Dataset)}
+
+
+def _parts(group: h5py.Group) -> Iterator[tuple[Value, dict[str, NDArray[Any]]]]:
+    """(value, arrays) for each value of a tally that is split, in their order."""
+    key = group.attrs.get("split_by")
+    parts = group.get(at.split_group(key), {}) if key is not None else {}
+    numbers = sorted(int(name) for name in parts if name.isdecimal())
+    for number in numbers:
+        part = parts[str(number)]
+        value = part.attrs["value"]
+        yield value if isinstance(value, str) else float(value), _arrays(part)
+
+
 def _estimates(group: h5py.Group) -> Named[Estimate]:
     columns: dict[str, list[Any]] = {
         **{key: group[key][()].tolist() for key in (*at.ESTIMATE_NUMBERS, "counts")},
@@ -224,7 +271,7 @@ def _scalars(group: h5py.Group) -> dict[str, Any]:
 
 def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[Any]]:
     try:
-        file = _open_history(path)
+        file = open_history(path)
     except OSError as error:
         raise _not_results(path, error) from error
     with file:
@@ -241,7 +288,7 @@ def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[An
         return found
 
 
-def _open_history(path: Path) -> h5py.File:
+def open_history(path: Path) -> h5py.File:
     """A history that grows, or was left so by a crash, in SWMR mode; a closed one as it is.
 
     In SWMR mode HDF5 waits for ever for what a damaged file lacks, so damage is looked for

@@ -120,9 +120,13 @@ class CoverageWriter:
             for column, value in zip(self._gap_columns, (begin, end - begin), strict=True):
                 column.append(value)
 
+    @property
+    def sizes(self) -> tuple[int, int]:
+        """Rows and gaps so far, without an open row."""
+        return self._columns[0].size, self._gap_columns[0].size
+
     def flush(self) -> None:
-        """Bring every row to the file; an open one goes on in a row of its own."""
-        self.end_row()
+        """Bring the rows that are closed to the file."""
         for column in (*self._columns, *self._gap_columns):
             column.flush()
 

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from tagstream.compiled import kernel
 
+CHUNK = 256  # tags that are looked at together
 LARGEST_OFFSET_PS = 2**32 - 1
 
 
@@ -41,6 +42,17 @@ def fill_groups(
         low = min(max(times_ps[first], -beyond_ps), beyond_ps)
         high = low
         last = first + 1
+        while last < n:  # many tags at a time, as long as all of them fit into the group
+            least = most = times_ps[last]
+            for t in times_ps[last : last + CHUNK]:
+                least = min(least, t)
+                most = max(most, t)
+            least = min(max(least, -beyond_ps), beyond_ps)
+            most = min(max(most, -beyond_ps), beyond_ps)
+            if most > low + spread or least < high - spread or most - least > spread:
+                break
+            low, high = min(low, least), max(high, most)
+            last = min(last + CHUNK, n)
         while last < n:
             t = min(max(times_ps[last], -beyond_ps), beyond_ps)
             if t > low + spread or t < high - spread:
@@ -49,7 +61,8 @@ def fill_groups(
             high = max(high, t)
             last += 1
         for i in range(first, last):
-            offsets_ps[i] = np.uint32(min(max(times_ps[i], -beyond_ps), beyond_ps) - low)
+            t = min(max(times_ps[np.uint64(i)], -beyond_ps), beyond_ps)
+            offsets_ps[np.uint64(i)] = np.uint32(t - low)
         zeros_ps[groups] = low
         starts[groups] = first
         if low > -beyond_ps and high < beyond_ps:

@@ -26,6 +26,8 @@ A recording is an HDF5 file in the open NeXus conventions. Times are ps of strea
       flags                      r, uint8: sum of 1 vouched, 2 gap before, 4 lossy, 8 complete
     /run/gaps                    NXlog: time (begin of a gap, int64 ps), value (length, int64 ps)
     /run/mark_table              m, compound: time_ps int64, key S32, number float64, text S64
+    /run/settled                 6, int64: how much of a recording that was never closed is whole:
+                                 tags, groups, cues, rows of coverage, gaps, marks
     /run/marks                   NXcollection of an NXlog (numbers) or NXtextlog for each key
 
 A group ends where its spread would reach 2**32 ps, at the end of an interval, and where the
@@ -50,9 +52,10 @@ MARK_TABLE = "mark_table"
 
 CHUNK_EVENTS = 1 << 18  # larger chunks were no faster, smaller ones were slower to read
 CHUNK_ROWS = 1 << 12
-# Superblock 2, so that a closed file opens in programs built on HDF5 1.8 too. Never "latest":
-# what HDF5 2 then writes, 1.14 cannot read.
-LIBVER = ("v108", "v110")
+# What SWMR needs, and any HDF5 from 1.10 on reads. Never "latest": what HDF5 2 then writes, 1.14
+# cannot read.
+LIBVER = ("v110", "v110")
+SETTLED = "settled"
 
 VOUCHED, GAP_BEFORE, LOSSY, COMPLETE = 1, 2, 4, 8
 MARK_DTYPE = np.dtype([("time_ps", "<i8"), ("key", "S32"), ("number", "<f8"), ("text", "S64")])

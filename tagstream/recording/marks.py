@@ -4,24 +4,34 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
+from collections.abc import Sequence
+from typing import Any
 
 import h5py
 import numpy as np
+from numpy.typing import NDArray
 
+from tagstream.marks import key_problem, value_problem
 from tagstream.recording.appending import AppendedColumn
 from tagstream.recording.layout import MARK_DTYPE, Mark
 
 
 def append_mark(table: AppendedColumn, mark: Mark) -> None:
     """Append one row. Raises ValueError for a key or text that does not fit."""
-    key = mark.key.encode()
-    text = mark.value.encode() if isinstance(mark.value, str) else b""
-    if not 0 < len(key) <= 32 or "/" in mark.key or key == b".":
-        raise ValueError(f"key {mark.key!r}: right would be 1 to 32 bytes without /")
-    if len(text) > 64:
-        raise ValueError(f"value of {mark.key}: {len(text)} bytes; right would be at most 64")
-    number = math.nan if isinstance(mark.value, str) else float(mark.value)
-    table.append(np.array([(mark.time_ps, key, number, text)], MARK_DTYPE))
+    if problem := key_problem(mark.key) or value_problem(mark.key, mark.value):
+        raise ValueError(problem)
+    table.append(mark_rows([mark]))
+
+
+def mark_rows(marks: Sequence[Mark]) -> NDArray[Any]:
+    """Marks as rows of the table."""
+    return np.array([_row(mark) for mark in marks], MARK_DTYPE)
+
+
+def _row(mark: Mark) -> tuple[int, bytes, float, bytes]:
+    if isinstance(mark.value, str):
+        return mark.time_ps, mark.key.encode(), math.nan, mark.value.encode()
+    return mark.time_ps, mark.key.encode(), float(mark.value), b""
 
 
 def read_marks(table: h5py.Dataset) -> list[Mark]:

@@ -1,6 +1,7 @@
 """Writes a recording: the whole structure first, then tags are appended.
 
 One thread. The file has a temporary name until it is closed whole, and never replaces another.
+It grows in SWMR mode, so that after a crash all that was flushed can be read; see `recovery`.
 """
 
 from __future__ import annotations
@@ -18,8 +19,9 @@ from numpy.typing import NDArray
 from tagstream import units
 from tagstream.errors import ResultsError
 from tagstream.recording.appending import AppendedColumn
+from tagstream.recording.completion import complete
 from tagstream.recording.coverage import CoverageWriter, Row
-from tagstream.recording.header import RecordingHeader, write_end, write_header
+from tagstream.recording.header import RecordingHeader, write_header
 from tagstream.recording.kernels import fill_groups
 from tagstream.recording.layout import (
     CHUNK_EVENTS,
@@ -31,9 +33,10 @@ from tagstream.recording.layout import (
     MARK_DTYPE,
     MARK_TABLE,
     MARKS,
+    SETTLED,
     Mark,
 )
-from tagstream.recording.marks import append_mark, read_marks, write_logs
+from tagstream.recording.marks import append_mark
 from tagstream.recording.naming import give_name, make_file
 
 MIN_FREE_BYTES = 32_000_000  # HDF5 cannot close a file on a full disk: stop before it is full
@@ -74,6 +77,8 @@ class RecordingWriter:
         _group(entry, MARKS, "NXcollection")
         if self.header.origin_utc is not None:
             gaps["time"].attrs["start"] = self.header.origin_utc
+        self._settled = entry.create_dataset(SETTLED, data=np.zeros(6, "<i8"), chunks=(6,))
+        self._file.swmr_mode = True
         self._zeros_scratch = np.empty(CHUNK_EVENTS, np.int64)
         self._starts_scratch = np.empty(CHUNK_EVENTS, np.int64)
         self._offsets_scratch = np.empty(CHUNK_EVENTS, np.uint32)
@@ -172,11 +177,15 @@ class RecordingWriter:
         append_mark(self._marks, mark)
 
     def flush(self) -> None:
-        """Bring everything added so far to the file."""
-        self._coverage.flush()
+        """Bring everything added so far to the file, the word of how much it is last."""
+        self._coverage.end_row()  # an interval that is open goes on in a row of its own
         columns = (self._offsets, self._ids, self._zeros, self._index)
         for column in (*columns, self._cue_zeros, self._cue_index, self._marks):
             column.flush()
+        self._coverage.flush()
+        self._file.flush()
+        sizes = (self.count, self._zeros.size, self._cue_zeros.size)
+        self._settled[:] = np.array([*sizes, *self._coverage.sizes, self._marks.size], "<i8")
         self._file.flush()
 
     def close(self) -> None:
@@ -185,18 +194,28 @@ class RecordingWriter:
             self._finish()
             give_name(self.part, self.path)
 
+    def abandon(self) -> None:
+        """Leave the file as it is on the disk, which takes nothing more; see `recovery`.
+
+        HDF5 keeps trying to write what it still holds, and crashes the interpreter at its end.
+        So that may go to the null device.
+        """
+        if self._closed:
+            return
+        self._closed = True
+        null = os.open(os.devnull, os.O_RDWR)
+        os.dup2(null, self._file.id.get_vfd_handle())
+        os.close(null)
+        self._file.close()
+
     def _finish(self) -> None:
         """Make a whole, closed file under the temporary name."""
         if self._closed:
             return
         self._closed = True
         self.flush()
-        entry = self._file[ENTRY]
-        write_logs(entry[MARKS], read_marks(entry[MARK_TABLE]), self.header.origin_utc)
-        write_end(entry)
-        self._file.flush()
-        os.fsync(self._file.id.get_vfd_handle())
         self._file.close()
+        complete(self.part, self.header.origin_utc)
 
     def __enter__(self) -> RecordingWriter:
         return self

@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from fractions import Fraction
+from math import gcd
 from pathlib import Path
 from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
-from tagstream.settings.quantities import Bytes, PositiveTimePs, TickPs, TimePs
+from tagstream.settings.quantities import Bytes, PositiveTimePs, TickPs, TimePs, check_tick
 from tagstream.settings.section import Section
+from tagstream.units import format_time
 
 BitField = Annotated[tuple[int, int], Field(description="first bit and number of bits")]
 
@@ -74,6 +77,14 @@ class Marker(Section):
         return self
 
 
+class FineTime(Section):
+    """A second field of the time, with a tick of its own: added to the first, or taken off."""
+
+    bits: BitField
+    tick_ps: TickPs = Field(alias="tick")
+    sign: Literal["+", "-"] = "+"
+
+
 class RecordLayout(Section):
     """Fixed-size binary records, read as one unsigned integer whose bit 0 is the least."""
 
@@ -82,12 +93,53 @@ class RecordLayout(Section):
     tick_ps: TickPs = Field(alias="tick")
     time_bits: BitField
     channel_bits: BitField
+    fine: FineTime | None = None
+    wrap: Literal["markers", "implicit"] = "markers"  # what tells that the clock began again
     markers: list[Marker] = Field(default_factory=list, alias="marker")
+
+    @property
+    def native_tick_ps(self) -> Fraction:
+        """The longest tick of which `tick` and that of `fine` are multiples."""
+        if self.fine is None:
+            return self.tick_ps
+        a, b = self.tick_ps, self.fine.tick_ps
+        common = gcd(a.numerator * b.denominator, b.numerator * a.denominator)
+        return Fraction(common, a.denominator * b.denominator)
+
+    @property
+    def factors(self) -> tuple[int, int]:
+        """Native ticks in a count of `time_bits`, and in one of `fine`; signed, 0 without."""
+        native = self.native_tick_ps
+        if self.fine is None:
+            return 1, 0
+        fine = int(self.fine.tick_ps / native)
+        return int(self.tick_ps / native), fine if self.fine.sign == "+" else -fine
+
+    @model_validator(mode="after")
+    def _check_clock(self) -> RecordLayout:
+        rollovers = any(marker.means == "rollover" for marker in self.markers)
+        if self.wrap == "implicit" and rollovers:
+            raise ValueError('wrap = "implicit", or markers that mean rollover, not both')
+        if self.wrap == "implicit" and self.time_bits[1] > 62:
+            raise ValueError('wrap = "implicit" only with time_bits of at most 62 bits')
+        if self.fine is None:
+            return self
+        check_tick(self.native_tick_ps)
+        coarse, fine = self.factors
+        longest = 2 ** self.time_bits[1] * coarse + 2 ** self.fine.bits[1] * abs(fine)
+        if longest > 2**62:
+            raise ValueError(
+                "fewer bits, or ticks with a longer common part: together, time_bits and fine"
+                f" reach {longest} times {format_time(self.native_tick_ps)}; at most 2**62 fit"
+            )
+        return self
 
     @model_validator(mode="after")
     def _check_fields(self) -> RecordLayout:
         total = 8 * self.record_bytes
         fields = [("time_bits", self.time_bits), ("channel_bits", self.channel_bits)]
+        if self.fine is not None:
+            fields.append(("fine bits", self.fine.bits))
         for number, marker in enumerate(self.markers, 1):
             fields += [(f"where of marker {number}", (a, b)) for a, b, _ in marker.conditions]
             if marker.count is not None:
@@ -110,12 +162,15 @@ class RecordsFeed(RecordLayout):
     kind: Literal["records"]
     path: Path
     skip_bytes: int = Field(0, ge=0, strict=True)
+    follow: bool = Field(False, strict=True)  # the file still grows: wait at its end for more
     begin_ps: TimePs | None = Field(None, alias="begin")
     end_ps: TimePs | None = Field(None, alias="end")
 
     @model_validator(mode="after")
     def _check_interval(self) -> RecordsFeed:
         check_interval(self.begin_ps, self.end_ps)
+        if self.follow and self.begin_ps is not None:
+            raise ValueError("`begin` and `end` only for a file that no longer grows")
         return self
 
 
@@ -174,6 +229,11 @@ FEED_KINDS: dict[str, type[Section]] = {
     "zmq": ZmqFeed,
 }
 LIVE_KINDS = ("tcp", "stdin", "zmq")
+
+
+def is_live(feed: FeedSettings) -> bool:
+    """Whether its tags come while they are made, and never end by themselves."""
+    return feed.kind in LIVE_KINDS or (isinstance(feed, RecordsFeed) and feed.follow)
 
 
 def check_bits(name: str, field: tuple[int, int]) -> None:

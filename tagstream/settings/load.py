@@ -52,11 +52,12 @@ class LoadedSettings:
     settings: Settings
     warnings: list[str]
     file: Path
+    overrides: tuple[str, ...] = ()
 
     def for_replay(self) -> LoadedSettings:
         """The same, where recordings stand in for the feed: what concerns it warns nobody."""
         rest = [text for text in self.warnings if not text.startswith("[feed]")]
-        return LoadedSettings(self.settings, rest, self.file)
+        return LoadedSettings(self.settings, rest, self.file, self.overrides)
 
     def to_toml(self) -> str:
         """The effective settings: every default written out, paths absolute."""
@@ -101,7 +102,7 @@ def load_settings(file: Path, overrides: tuple[str, ...] = ()) -> LoadedSettings
         raise SettingsError(problems)
     del parts["names"]
     settings = _absolute(Settings.model_construct(**parts), file.resolve().parent)
-    return LoadedSettings(settings, rules.warnings(settings), file)
+    return LoadedSettings(settings, rules.warnings(settings), file, overrides)
 
 
 def read_toml(file: Path, what: str = "settings") -> dict[str, Any]:

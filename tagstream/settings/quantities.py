@@ -48,9 +48,14 @@ def _tick(value: Any) -> Fraction:
     tick = units.parse_time(_text(value, "1 ps"))
     if tick <= 0:
         raise ValueError('a tick longer than zero, such as "1 ps"')
-    if 2 * tick.numerator * tick.denominator > 2**62:
+    return check_tick(tick)
+
+
+def check_tick(tick_ps: Fraction) -> Fraction:
+    """Raise ValueError unless counts of a tick become picoseconds exactly within 64 bits."""
+    if 2 * tick_ps.numerator * tick_ps.denominator > 2**62:
         raise ValueError("a tick whose numerator times denominator, in ps, is below 2**61")
-    return tick
+    return tick_ps
 
 
 def _period(value: Any) -> Fraction:

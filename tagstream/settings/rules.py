@@ -6,15 +6,20 @@ from collections.abc import Iterator
 from fractions import Fraction
 from typing import Any
 
+from tagstream.marks import key_problem
+from tagstream.settings.addresses import address_problems
+from tagstream.settings.doors import near
+from tagstream.settings.health import health_names
 from tagstream.settings.measures import CountRate, CrossCorrelation, G2Zero, G2ZeroPulsed
 from tagstream.settings.sections import Rolling, Settings
 from tagstream.settings.validation import nearest
 from tagstream.units import format_bytes, format_time
 
 RESERVED = (
-    *("run", "settings", "estimates", "channels", "health", "truth", "marks"),
+    *("run", "settings", "estimates", "channels", "health", "truth", "marks", "mark_table"),
     *("title", "start_time", "end_time", "program_name", "definition"),
 )
+SUMS_BYTES = 3 * 8  # of one bin: counts, pair time, expected pairs
 NAME_RULE = "a name has up to 31 small letters, digits and _, and starts with a letter"
 
 
@@ -34,6 +39,7 @@ def problems(parts: dict[str, Any]) -> Iterator[str]:
     spans = [span_text(span) for span in rolling.spans_ps]
     yield from _name_problems(parts, spans)
     yield from _channel_problems(parts["channels"])
+    yield from address_problems(parts)
     names: dict[str, list[str]] = parts["names"]
     tallies = {tally.name: tally for tally in parts["tallies"]}
     for tally in parts["tallies"]:
@@ -41,6 +47,7 @@ def problems(parts: dict[str, Any]) -> Iterator[str]:
             yield from _unknown(
                 f"[[tally]] {tally.name} {key}", getattr(tally, key), names["channels"]
             )
+        yield from _split_problems(tally)
     for estimate in parts["estimates"]:
         where = f"[[estimate]] {estimate.name}"
         if isinstance(estimate, CountRate):
@@ -56,20 +63,40 @@ def problems(parts: dict[str, Any]) -> Iterator[str]:
         if alert.estimate is not None:
             yield from _unknown(f"[[alert]] {number} estimate", alert.estimate, names["estimate"])
             yield from _unknown(f"[[alert]] {number} span", alert.span, ["run", *spans])
+        else:
+            known = health_names(names["channels"])
+            yield from _unknown(f"[[alert]] {number} health", alert.health, known)
     need = memory_bytes(parts["tallies"], rolling)
     if need > rolling.memory:
         yield (
             f"[rolling] memory: the tallies and spans need about {format_bytes(need)}, allowed are"
-            f" {format_bytes(rolling.memory)}; fewer bins or spans, or a larger memory"
+            f" {format_bytes(rolling.memory)}; fewer bins, spans or values (split_limit),"
+            " or a larger memory"
         )
 
 
 def memory_bytes(tallies: list[CrossCorrelation], rolling: Rolling) -> int:
     """What sums and parts of spans take: parts in 32 bits, sums in 64 (decided by the counts)."""
-    bins = sum(2 * tally.bins_each_side + 1 for tally in tallies)
     parts = sum(rolling.parts(span)[0] for span in rolling.spans_ps)
-    sums = 3 * 8 * (2 + len(rolling.spans_ps))  # counts, pair time, expected pairs
-    return bins * (sums + 4 * parts)
+    of_spans = SUMS_BYTES * (2 + len(rolling.spans_ps)) + 4 * parts
+    return sum(
+        (2 * tally.bins_each_side + 1) * (of_spans + SUMS_BYTES * _split_places(tally))
+        for tally in tallies
+    )
+
+
+def _split_places(tally: CrossCorrelation) -> int:
+    """Sums that a split takes: a value each, "unmarked" and "other"; two more in a slice."""
+    return 0 if tally.split_by is None else tally.split_limit + 4
+
+
+def _split_problems(tally: CrossCorrelation) -> Iterator[str]:
+    where = f"[[tally]] {tally.name}"
+    if tally.split_by is not None and (problem := key_problem(tally.split_by)):
+        yield f"{where} split_by: {problem}"
+    default = CrossCorrelation.model_fields["split_limit"].default
+    if tally.split_by is None and tally.split_limit != default:
+        yield f"{where} split_limit: not used without split_by; right would be both, or neither"
 
 
 def _name_problems(parts: dict[str, Any], spans: list[str]) -> Iterator[str]:
@@ -162,7 +189,7 @@ def warnings(settings: Settings) -> list[str]:
         path = getattr(settings.feed, key, None)
         if path is not None and not path.exists():
             found.append(f"[feed] {key}: {path} does not exist")
-    tick = getattr(settings.feed, "tick_ps", None)
+    tick = getattr(settings.feed, "native_tick_ps", getattr(settings.feed, "tick_ps", None))
     for tally in settings.tallies:
         if tick is not None and (text := bin_warning(tally, tick)):
             found.append(text)
@@ -172,7 +199,14 @@ def warnings(settings: Settings) -> list[str]:
                 f"[[tally]] {tally.name}: of one channel with itself, so lags below its dead_time"
                 f" ({format_time(dead)}) are empty"
             )
-    if settings.feed.kind in ("columns", "records") and settings.feed.begin_ps is None:
+    listen = getattr(settings.feed, "listen", None)
+    if listen is not None and not near(listen):
+        found.append(
+            f"[feed] listen: {listen} can be reached by others, and raw TCP asks nobody who they"
+            " are: whoever reaches it can send tags; right would be a network of your own"
+        )
+    follows = getattr(settings.feed, "follow", False)
+    if getattr(settings.feed, "begin_ps", 0) is None and not follows:
         found.append(
             "[feed] begin, end: not given, so live time is assumed to run from the first tag to"
             " the last"

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import Field, model_validator
+from pydantic import Field, FiniteFloat, model_validator
 
 from tagstream.settings.feeds import FeedSettings
 from tagstream.settings.measures import EstimateSettings, TallySettings
@@ -23,6 +24,7 @@ from tagstream.settings.section import Section
 from tagstream.units import PS_PER_S
 
 MOST_PARTS = 64
+_PROGRAM = re.compile(r"[^/\0]+|/[^\0]+")  # found in PATH, or at that place
 
 
 class Channel(Section):
@@ -99,9 +101,9 @@ class Alert(Section):
     estimate: str | None = None
     span: str | None = None
     health: str | None = None
-    above: float | None = None
-    below: float | None = None
-    clear: float | None = None  # absent: the same bound
+    above: FiniteFloat | None = None
+    below: FiniteFloat | None = None
+    clear: FiniteFloat | None = None  # absent: the same bound
     hold_ps: NotNegativeTimePs = Field(0, alias="hold")
     command: list[str] = Field(default_factory=list)  # program and arguments; no shell
 
@@ -118,6 +120,10 @@ class Alert(Section):
             or (self.below is not None and self.clear < self.below)
         ):
             raise ValueError("`clear` on the quiet side of the bound")
+        if self.command and not _PROGRAM.fullmatch(self.command[0]):
+            raise ValueError("`command` a program by its name or its whole path, then arguments")
+        if any("\0" in part for part in self.command):
+            raise ValueError("`command` without zero bytes")
         return self
 
 

@@ -20,6 +20,7 @@ _RIGHT = {
     "int_from_float": "a whole number",
     "float_type": "a number",
     "float_parsing": "a number",
+    "finite_number": "a finite number",
     "string_type": "a text",
     "path_type": "a path",
     "bool_type": "true or false",

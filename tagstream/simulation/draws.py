@@ -15,6 +15,8 @@ from tagstream.units import PS_PER_S
 
 def spread(count: int, arms: Sequence[Arm], rng: np.random.Generator) -> NDArray[np.uint8]:
     """The arm of each of `count` detected photons: each for itself, in proportion to the shares."""
+    if count == 0:
+        return np.empty(0, np.uint8)
     total = total_share(arms)
     bounds = np.cumsum([arm.share / total for arm in arms[:-1]])
     return np.searchsorted(bounds, rng.random(count), side="right").astype(np.uint8)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from math import hypot
 from typing import NamedTuple, Protocol
@@ -12,7 +12,10 @@ from typing import NamedTuple, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
+from tagstream.recording.layout import Mark
 from tagstream.settings.section import Section
+
+TRANSMITTED, REFLECTED, HERALD = "transmitted", "reflected", "herald"
 
 
 @dataclass(frozen=True, slots=True)
@@ -20,7 +23,12 @@ class Arm:
     """One detector as the light sees it.
 
     port: the port of the splitter it looks at. share: the probability that a photon at the
-    splitter goes to that port and is detected, before dead time.
+    splitter goes to that port and is detected, before dead time. split, beside: what parts of the
+    light in one input of the splitter go to this port and to the other. efficiency: of the
+    detector alone.
+    delay_ps, delay_drift: how much later its tags are, at the start and more in each hour.
+    afterpulse_ps: mean time from the end of the dead time to an afterpulse. crosstalk_ps: how
+    much later than a count of this detector the other one counts for it.
     """
 
     port: str
@@ -28,6 +36,19 @@ class Arm:
     jitter_sigma_ps: float = 0.0
     dead_time_ps: int = 0
     dark_rate_hz: float = 0.0
+    split: float = 1.0
+    beside: float = 0.0
+    efficiency: float = 1.0
+    delay_ps: int = 0
+    delay_drift: float = 0.0
+    afterpulse_probability: float = 0.0
+    afterpulse_ps: int = 0
+    crosstalk_probability: float = 0.0
+    crosstalk_ps: int = 0
+
+    def dimmed(self, factor: float) -> Arm:
+        """The same arm when only that fraction of its light is left."""
+        return replace(self, share=self.share * factor, efficiency=self.efficiency * factor)
 
     def light_fraction(self, photon_rate_hz: float) -> float:
         """The fraction of its counts that are photons and not dark counts."""
@@ -38,6 +59,11 @@ class Arm:
 def joint_sigma_ps(a: Arm, b: Arm) -> float:
     """Standard deviation of the jitter of a lag between two arms."""
     return hypot(a.jitter_sigma_ps, b.jitter_sigma_ps)
+
+
+def arm_at(port: str, arms: Sequence[Arm]) -> Arm | None:
+    """The arm at a port of the splitter, if it has a detector."""
+    return next((arm for arm in arms if arm.port == port), None)
 
 
 class Photons(NamedTuple):
@@ -79,12 +105,17 @@ class Source(Section, ABC):
     @property
     @abstractmethod
     def memory_ps(self) -> float:
-        """The longest time constant: photons much further apart are independent."""
+        """The time constant with which the light that `light` begins becomes stationary."""
 
     @property
     @abstractmethod
-    def light_g2_zero(self) -> float:
-        """g2(0) of the light at the splitter."""
+    def light_g2_zero(self) -> float | None:
+        """g2(0) of the light at the splitter, where that is one number."""
+
+    @property
+    def ports(self) -> tuple[str, ...]:
+        """Where detectors may be."""
+        return TRANSMITTED, REFLECTED
 
     @property
     def signal_fraction(self) -> float:
@@ -95,6 +126,18 @@ class Source(Section, ABC):
     @abstractmethod
     def default_window_ps(self) -> float:
         """The window for which the truth states g2(0), unless the scenario names another."""
+
+    def seen_by(self, arms: Sequence[Arm]) -> tuple[Arm, ...]:
+        """The arms with their shares of all photons; given, of those in one splitter input."""
+        return tuple(arms)
+
+    def marks(self, begin_ps: int, end_ps: int) -> tuple[Mark, ...]:
+        """What is set during the interval, in order of time: none, unless the source says."""
+        return ()
+
+    def known(self, arms: Sequence[Arm], window_ps: float) -> dict[str, float]:
+        """Further numbers that a right analysis finds, by name; none, unless the source says."""
+        return {}
 
     @abstractmethod
     def light(self, arms: Sequence[Arm]) -> Light:

@@ -14,10 +14,12 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
+from tagstream.recording.layout import Mark
 from tagstream.simulation.detectors import Detectors, floor_to_tick
 from tagstream.simulation.light import Arm
 from tagstream.simulation.pulses import clock_times_ps
 from tagstream.simulation.scenario import Scenario
+from tagstream.simulation.triggered import Triggered
 from tagstream.units import PS_PER_S
 
 STEP_TAGS = 1 << 18  # tags expected in a step
@@ -28,12 +30,14 @@ class Piece(NamedTuple):
     """All tags of the interval [begin_ps, end_ps), in time order.
 
     times_ps: int64, n. inputs: uint8, n, or uint16 when an input of the scenario exceeds 255.
+    marks: what was set in it, such as a stage position.
     """
 
     times_ps: NDArray[np.int64]
     inputs: NDArray[np.uint8] | NDArray[np.uint16]
     begin_ps: int
     end_ps: int
+    marks: tuple[Mark, ...] = ()
 
 
 def simulate_pieces(
@@ -54,7 +58,8 @@ def simulate_pieces(
         if begin_ps >= 0:
             end_ps = min(begin_ps + length_ps, duration_ps)
             inside = int(np.searchsorted(times_ps, np.int64(end_ps), side="left"))
-            yield Piece(times_ps[:inside], inputs[codes[:inside]], begin_ps, end_ps)
+            marks = scenario.source.marks(begin_ps, end_ps)
+            yield Piece(times_ps[:inside], inputs[codes[:inside]], begin_ps, end_ps, marks)
 
 
 def step_ps(scenario: Scenario) -> int:
@@ -72,8 +77,11 @@ def step_ps(scenario: Scenario) -> int:
 
 
 def _settling_steps(scenario: Scenario, length_ps: int, reach_ps: int) -> int:
-    longest = scenario.source.memory_ps + max(arm.dead_time_ps for arm in scenario.arms)
-    return 1 + ceil((_SETTLED * longest + reach_ps) / length_ps)
+    arms = scenario.arms
+    longest = scenario.source.memory_ps
+    longest += max(arm.dead_time_ps + arm.afterpulse_ps + arm.crosstalk_ps for arm in arms)
+    farthest = reach_ps + max(arm.delay_ps for arm in arms)
+    return 1 + ceil((_SETTLED * longest + farthest) / length_ps)
 
 
 def _input_numbers(scenario: Scenario) -> NDArray[np.uint8] | NDArray[np.uint16]:
@@ -88,20 +96,22 @@ class _Run:
     """What goes on from step to step: light, detectors, and tags that belong to later pieces."""
 
     def __init__(self, scenario: Scenario, seed: int) -> None:
-        arms = scenario.arms
+        arms, brightest = scenario.arms, scenario.drift.most
         self._scenario = scenario
-        self._light = scenario.source.light(arms)
+        self._light = scenario.source.light([arm.dimmed(brightest) for arm in arms])
         self._clock_code = np.uint8(len(arms))
         # The clock is wired like an arm that sees no light and is never dead.
         self._detectors = Detectors((*arms, Arm("clock", 0.0)))
         self._rng = np.random.Generator(np.random.PCG64(np.random.SeedSequence(seed)))
         self._later = _Later()
+        self._triggered = Triggered(arms, self._detectors)
         self.reach_ps = self._detectors.reach_ps
 
     def advance(self, begin_ps: int, length_ps: int) -> tuple[NDArray[np.int64], NDArray[np.uint8]]:
         """Times and codes of all tags of the piece [begin_ps, begin_ps + length_ps)."""
         drawn_from = begin_ps + self.reach_ps
         photons = self._light.draw(drawn_from, length_ps, self._rng)
+        photons = self._scenario.drift.thinned(photons, drawn_from, self._rng)
         times_ps, codes = self._detectors.respond(photons, drawn_from, length_ps, self._rng)
         clock_ps = self._clock_tags(drawn_from, drawn_from + length_ps)
         times_ps, codes = self._later.in_order(
@@ -109,8 +119,16 @@ class _Run:
             np.concatenate((codes, np.full(clock_ps.size, self._clock_code))),
             begin_ps + length_ps,
         )
+        times_ps, codes = self._registered(times_ps, codes, begin_ps + length_ps)
+        return floor_to_tick(times_ps, self._scenario.tick_ps), codes
+
+    def _registered(
+        self, times_ps: NDArray[np.int64], codes: NDArray[np.uint8], end_ps: int
+    ) -> tuple[NDArray[np.int64], NDArray[np.uint8]]:
+        if self._triggered:
+            return self._triggered.registered(times_ps, codes, end_ps, self._rng)
         survives = self._detectors.dead_time(times_ps, codes)
-        return floor_to_tick(times_ps[survives], self._scenario.tick_ps), codes[survives]
+        return times_ps[survives], codes[survives]
 
     def _clock_tags(self, begin_ps: int, end_ps: int) -> NDArray[np.int64]:
         clock, period = self._scenario.clock, self._scenario.source.pulse_period

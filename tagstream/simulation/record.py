@@ -1,4 +1,4 @@
-"""A scenario to a recording that carries its own truth."""
+"""A scenario to a recording that carries its own truth and marks."""
 
 from __future__ import annotations
 
@@ -25,7 +25,7 @@ def record_scenario(
     duration_ps: absent, the scenario's. after_piece: told how far the recording has come, in ps;
     True ends it there. Raises ResultsError when the file exists or cannot be written.
     """
-    known = {**truth(scenario), "seed": seed}
+    known = {**truth(scenario, duration_ps), "seed": seed}
     header = RecordingHeader(title=scenario.title, truth=known)
     wide = any(detector.input > 255 for detector in scenario.detectors)
     wide = wide or (scenario.clock is not None and scenario.clock.input > 255)
@@ -34,6 +34,8 @@ def record_scenario(
     ) as writer:
         for piece in simulate_pieces(scenario, seed, duration_ps):
             writer.add(piece.times_ps, piece.inputs, piece.begin_ps, piece.end_ps)
+            for mark in piece.marks:
+                writer.add_mark(mark)
             if after_piece(piece.end_ps):
                 break
     return known

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from pathlib import Path
@@ -12,16 +12,18 @@ from pydantic import Field, model_validator
 
 from tagstream.errors import SettingsError
 from tagstream.settings.load import read_toml
-from tagstream.settings.quantities import InputNumber, PositiveTimePs
+from tagstream.settings.quantities import DelayPs, InputNumber, PositiveTimePs
 from tagstream.settings.section import Section
 from tagstream.settings.validation import nearest, shown, validate_section
+from tagstream.simulation.drift import Drift, Part
 from tagstream.simulation.jitter import FWHM_PER_SIGMA
-from tagstream.simulation.light import Arm, Source
+from tagstream.simulation.light import HERALD, REFLECTED, TRANSMITTED, Arm, Source
 from tagstream.simulation.quantities import CoarseTickPs, RateHz, Share, ShortTimePs
 from tagstream.simulation.sources import SOURCE_KINDS
 from tagstream.units import PS_PER_S, format_time
 
 S = TypeVar("S", bound=Section)
+BESIDE = {TRANSMITTED: REFLECTED, REFLECTED: TRANSMITTED, HERALD: ""}
 
 
 class Run(Section):
@@ -44,26 +46,54 @@ class Splitter(Section):
             raise ValueError("`transmittance` and `reflectance` with a sum of at most 1")
         return self
 
+    def split(self, port: str) -> float:
+        """What part of the light goes to a port; the herald's detector is not behind it."""
+        parts = {TRANSMITTED: self.transmittance, REFLECTED: self.reflectance, HERALD: 1.0}
+        return parts.get(port, 0.0)
+
 
 class Detector(Section):
     """A detector at one port of the splitter, and the input that its tags arrive at."""
 
     input: InputNumber
-    port: Literal["transmitted", "reflected"]
+    port: Literal["transmitted", "reflected", "herald"]
     efficiency: Share
     jitter_fwhm_ps: ShortTimePs = Field(0, alias="jitter_fwhm")
     dead_time_ps: ShortTimePs = Field(0, alias="dead_time")
     dark_rate_hz: RateHz = Field(0.0, alias="dark_rate")
+    delay_ps: ShortTimePs = Field(0, alias="delay")  # of its tags
+    delay_drift_ps: DelayPs = Field(0, alias="delay_drift_per_hour")  # up to 1 us in all
+    afterpulse_probability: Part = 0.0  # that a count is followed by one, after the dead time
+    afterpulse_ps: ShortTimePs = Field(0, alias="afterpulse_time")  # mean, from its end on
+    crosstalk_probability: Part = 0.0  # that a count makes one in each other detector
+    crosstalk_ps: ShortTimePs = Field(0, alias="crosstalk_delay")
+
+    @model_validator(mode="after")
+    def _check(self) -> Detector:
+        if (self.afterpulse_probability > 0) != (self.afterpulse_ps > 0):
+            raise ValueError("`afterpulse_probability` and `afterpulse_time` together, or neither")
+        if (self.crosstalk_probability > 0) != (self.crosstalk_ps > 0):
+            raise ValueError("`crosstalk_probability` and `crosstalk_delay` together, or neither")
+        return self
 
     def arm(self, splitter: Splitter) -> Arm:
-        """The detector as the light sees it."""
-        through = self.port == "transmitted"
+        """The detector as the light in one input of the splitter sees it."""
+        split = splitter.split(self.port)
         return Arm(
             port=self.port,
-            share=(splitter.transmittance if through else splitter.reflectance) * self.efficiency,
+            share=split * self.efficiency,
             jitter_sigma_ps=self.jitter_fwhm_ps / FWHM_PER_SIGMA,
             dead_time_ps=self.dead_time_ps,
             dark_rate_hz=self.dark_rate_hz,
+            split=split,
+            beside=splitter.split(BESIDE[self.port]),
+            efficiency=self.efficiency,
+            delay_ps=self.delay_ps,
+            delay_drift=float(self.delay_drift_ps),
+            afterpulse_probability=self.afterpulse_probability,
+            afterpulse_ps=self.afterpulse_ps,
+            crosstalk_probability=self.crosstalk_probability,
+            crosstalk_ps=self.crosstalk_ps,
         )
 
 
@@ -80,6 +110,9 @@ class Truth(Section):
     window_ps: PositiveTimePs | None = Field(None, alias="window")  # full width, for g2(0)
 
 
+NO_DRIFT = Drift()
+
+
 @dataclass(frozen=True, slots=True)
 class Scenario:
     """A checked scenario."""
@@ -91,6 +124,7 @@ class Scenario:
     detectors: tuple[Detector, ...]
     clock: Clock | None
     truth: Truth
+    drift: Drift = NO_DRIFT
 
     @property
     def title(self) -> str:
@@ -110,7 +144,12 @@ class Scenario:
     @property
     def arms(self) -> tuple[Arm, ...]:
         """The detectors as the light sees them, in the order of the file."""
-        return tuple(detector.arm(self.splitter) for detector in self.detectors)
+        return self.source.seen_by([detector.arm(self.splitter) for detector in self.detectors])
+
+    def pair(self, arms: Sequence[Arm]) -> tuple[Arm, Arm] | None:
+        """Those at the two outputs of the splitter, if both have a detector; as in the file."""
+        found = [arm for arm in arms if arm.port != HERALD]
+        return (found[0], found[1]) if len(found) == 2 else None
 
     @property
     def clock_rate_hz(self) -> float:
@@ -142,12 +181,15 @@ def build_scenario(table: dict[str, Any], file: str) -> Scenario:
     detectors = reader.detectors(table.get("detector"))
     clock = reader.table(Clock, table["clock"], "[clock]") if "clock" in table else None
     truth = reader.table(Truth, table.get("truth", {}), "[truth]")
+    drift = reader.table(Drift, table.get("drift", {}), "[drift]")
     for text in _contradictions(source, detectors, clock, truth):
         reader.problem(text)
-    if problems or run is None or source is None or splitter is None or truth is None:
+    for text in _too_bright(detectors, drift):
+        reader.problem(text)
+    if problems or not (run and source and splitter and truth and drift):
         raise SettingsError(problems)
     kind = table["source"]["kind"]
-    return Scenario(kind, run, source, splitter, tuple(detectors), clock, truth)
+    return Scenario(kind, run, source, splitter, tuple(detectors), clock, truth, drift)
 
 
 def _contradictions(
@@ -162,12 +204,27 @@ def _contradictions(
         yield f'[[detector]] port: found "{port}" more than once; one detector for each port'
     if source is None:
         return
+    for port in sorted(set(ports) - set(source.ports)):
+        known = ", ".join(source.ports)
+        yield f'[[detector]] port: found "{port}", which this source has not; known are {known}'
+    if HERALD in ports and len(ports) == 1:
+        yield "[[detector]]: only a herald; right would be a detector at the splitter too"
     period = source.pulse_period
     if clock is not None and period is None:
         yield "[clock]: this source has no pulses; remove the table"
     window = truth.window_ps if truth is not None else None
     if window is not None and period is not None and window > period:
         yield f"[truth] window: longer than the period, {format_time(period)}"
+
+
+def _too_bright(detectors: list[Detector], drift: Drift | None) -> Iterator[str]:
+    """Detectors that would have to see more than all light at the top of a swing."""
+    for number, detector in enumerate(detectors, 1):
+        if drift is not None and detector.efficiency * drift.most > 1:
+            yield (
+                f"[[detector]] {number} efficiency: found {detector.efficiency}; with"
+                f" [drift] swing = {drift.swing} right would be at most {1 / drift.most:.6g}"
+            )
 
 
 class _Reader:
@@ -181,7 +238,7 @@ class _Reader:
 
     def run(self, table: dict[str, Any]) -> Run | None:
         own = Run.keys()
-        known = [*own, "source", "splitter", "detector", "clock", "truth"]
+        known = [*own, "source", "splitter", "detector", "clock", "truth", "drift"]
         for key in table:
             if key not in known:
                 self.problem(f"{key}: unknown section or key; {nearest(key, known)}")
@@ -212,7 +269,7 @@ class _Reader:
 
     def detectors(self, value: Any) -> list[Detector]:
         if not isinstance(value, list) or not value:
-            self.problem("[[detector]]: missing; right would be one or two such tables")
+            self.problem("[[detector]]: missing; right would be one such table for each")
             return []
         found = [
             self.table(Detector, table, f"[[detector]] {number}")

@@ -15,6 +15,11 @@ from tagstream.tallies.bins import lag_axis, lag_edges
 from tagstream.tallies.pair_time import PairTime
 from tagstream.tallies.pairs import PairHistograms
 
+SUM_NAMES = (
+    *("counts", "start_counts", "stop_counts"),
+    *("live_time_ps", "pair_time_ps", "expected_pairs"),
+)
+
 
 def build(
     sections: Sequence[CrossCorrelation], channels: Mapping[str, int]
@@ -24,6 +29,11 @@ def build(
     for section in sections:
         alike.setdefault((section.bin_ps, section.bins_each_side), []).append(section)
     return [CrossCorrelations(group, channels) for group in alike.values()]
+
+
+def sums_in(arrays: Mapping[str, NDArray[Any]]) -> dict[str, NDArray[Any]]:
+    """What adds up, of all that the results of a tally hold; a resumed run goes on from it."""
+    return {name: np.asarray(arrays[name]) for name in SUM_NAMES}
 
 
 def expected_pairs(

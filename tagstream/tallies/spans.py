@@ -47,6 +47,26 @@ class Spans:
         for _, window in self._windows:
             window.add(slice_index, sums)
 
+    @property
+    def slices(self) -> tuple[int, int] | None:
+        """The first slice of the run, and the one after the last; None before any has ended."""
+        return None if self._first_slice is None else (self._first_slice, self._last_slice + 1)
+
+    def restore(self, slices: tuple[int, int], run: Mapping[str, Sums]) -> None:
+        """Go on with the sums of a run that an earlier process had added up; spans are empty.
+
+        slices: as told by `slices`. run: sums by name of tally.
+        """
+        self._first_slice, self._last_slice = slices[0], slices[1] - 1
+        self._run = {name: added(None, sums) for name, sums in run.items()}
+        for _, window in self._windows:
+            window.begin_empty(run, slices[1])
+
+    def restart(self) -> None:
+        """Empty all spans but that of the run."""
+        for _, window in self._windows:
+            window.restart(self._last_slice + 1)
+
     def __iter__(self) -> Iterator[SpanSums]:
         """The run, then the spans in the order of the settings."""
         first = self._first_slice or 0
@@ -68,9 +88,11 @@ class _Window:
         self._count, self._each = count, each
         self._parts: deque[tuple[int, dict[str, dict[str, NDArray[Any]]]]] = deque()
         self._totals: dict[str, dict[str, NDArray[Any]]] = {}
+        self._since = 0  # the slice with which it began anew
+        self._nothing: dict[str, dict[str, NDArray[Any]]] = {}  # floats of an empty window
 
     def first_slice(self, last_slice: int) -> int:
-        return (last_slice // self._each - self._count + 1) * self._each
+        return max(self._since, (last_slice // self._each - self._count + 1) * self._each)
 
     def add(self, slice_index: int, sums: Mapping[str, Sums]) -> None:
         part = slice_index // self._each
@@ -84,8 +106,24 @@ class _Window:
         for name, more in sums.items():
             self._totals[name] = added(self._totals.get(name), _integers(more))
 
+    def begin_empty(self, like: Mapping[str, Sums], next_slice: int) -> None:
+        """Hold nothing, in arrays like those given."""
+        self._since = next_slice
+        self._totals = {name: _zeros(_integers(sums)) for name, sums in like.items()}
+        floats = {n: {k: v for k, v in s.items() if v.dtype.kind == "f"} for n, s in like.items()}
+        self._nothing = {name: _zeros(sums) for name, sums in floats.items()}
+
+    def restart(self, next_slice: int) -> None:
+        self._since = next_slice
+        self._nothing = {name: _zeros(self._floats(name)) for name in self._totals}
+        self._parts.clear()
+        self._totals = {name: _zeros(sums) for name, sums in self._totals.items()}
+
     def totals(self) -> dict[str, Sums]:
-        return {name: {**total, **self._floats(name)} for name, total in self._totals.items()}
+        return {
+            name: {**total, **self._nothing.get(name, {}), **self._floats(name)}
+            for name, total in self._totals.items()
+        }
 
     def _subtract(self, part: Mapping[str, Sums]) -> None:
         for name, old in part.items():
@@ -100,6 +138,10 @@ class _Window:
                 if value.dtype.kind == "f":
                     found[key] = np.asarray(found[key] + value) if key in found else value
         return found
+
+
+def _zeros(sums: Sums) -> dict[str, NDArray[Any]]:
+    return {key: np.zeros_like(value) for key, value in sums.items()}
 
 
 def _integers(sums: Sums) -> dict[str, NDArray[Any]]:

@@ -47,16 +47,22 @@ def layouts(draw: st.DrawFn) -> RecordLayout:
             table |= draw(st.sampled_from([{}, {"step": draw(st.integers(1, 2**64))}]))
         return table
 
-    return RecordLayout.model_validate(
-        {
-            "record_bytes": size,
-            "byte_order": draw(st.sampled_from(["little", "big"])),
-            "tick": "1 ps",
-            "time_bits": field(),
-            "channel_bits": field(16),
-            "marker": [marker() for _ in range(draw(st.integers(0, 3)))],
-        }
-    )
+    markers = [marker() for _ in range(draw(st.integers(0, 3)))]
+    clocks: list[dict[str, Any]] = [{}]
+    if all(table["means"] != "rollover" for table in markers):
+        clocks.append({"wrap": "implicit", "time_bits": field(62)})
+    sign, tick = draw(st.sampled_from("+-")), draw(st.sampled_from(["7/3 ps", "1 ns", "4/5 ps"]))
+    fine = {"bits": field(20), "tick": "4/5 ps", "sign": sign}
+    clocks += [clock | {"tick": tick, "time_bits": field(40), "fine": fine} for clock in clocks]
+    layout = {
+        "record_bytes": size,
+        "byte_order": draw(st.sampled_from(["little", "big"])),
+        "tick": "1 ps",
+        "time_bits": field(),
+        "channel_bits": field(16),
+        "marker": markers,
+    }
+    return RecordLayout.model_validate(layout | draw(st.sampled_from(clocks)))
 
 
 def decode(layout: RecordLayout, parts: list[bytes]) -> tuple[list[tuple[int, int, bool]], bool]:
@@ -96,15 +102,16 @@ def test_words_are_the_records_as_integers(size: int, big: bool, data: bytes) ->
 def test_decoding_stops_at_a_gap_that_has_tags_before_it() -> None:
     """Bit 7 of a record of one number means a gap; the gap itself is used by the next call."""
     low = np.array([1, 2, 128, 3, 128], np.int64)
-    fields = np.array([[0, 127, 0, 0, 0], [0, 0, 0, 0, 0]], np.int64)
+    fields = np.zeros((3, 7), np.int64)
+    fields[0, [1, 5]] = 127, 1
     marker = np.array([[1, 128, 128, 0, 0, 0, 0, 0, 0, 0, 0, 0]], np.int64)
-    state = np.zeros(3, np.int64)
+    state = np.array([0, 0, 0, -1], np.int64)
     ticks, inputs = np.empty(5, np.int64), np.empty(5, np.uint8)
     nothing = np.empty(0, np.int64)
     used = fill_decoded(low, nothing, fields, marker, state, ticks, inputs)
-    assert (used, ticks[: state[1]].tolist(), state.tolist()) == (2, [1, 2], [0, 2, 0])
+    assert (used, ticks[: state[1]].tolist(), state.tolist()) == (2, [1, 2], [0, 2, 0, -1])
     used = fill_decoded(low[2:], nothing, fields, marker, state, ticks, inputs)
-    assert (used, ticks[: state[1]].tolist(), state.tolist()) == (2, [3], [0, 1, 1])
+    assert (used, ticks[: state[1]].tolist(), state.tolist()) == (2, [3], [0, 1, 1, -1])
 
 
 # CSV --------------------------------------------------------------------------------------

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import re
+from fractions import Fraction
+from math import floor
 from pathlib import Path
 from typing import Any
 
@@ -60,6 +63,46 @@ def test_rollovers_add_up_by_count_and_by_step() -> None:
         data(tag(1), ROLLOVER | 2, tag(1), STEP, tag(1), ROLLOVER | 0, tag(1), SKIP, tag(2))
     )
     assert piece.ticks.tolist() == [1, 2**17 + 1, 2**17 + 1001, 2**17 + 1001, 2**17 + 1002]
+
+
+def test_without_markers_a_time_far_below_the_last_means_that_the_clock_began_again() -> None:
+    """Late tags of before the wrap, and garbage, put the time off for themselves alone."""
+    implicit = decoder(wrap="implicit", marker=[])
+    times = [65_000, 10, 65_530, 12, 30_000, 62_000, 5]
+    (piece,) = implicit.feed(data(*map(tag, times)))
+    turn = 2**16
+    expected = [65_000, turn + 10, 65_530, *(turn + t for t in times[3:6]), 2 * turn + 5]
+    assert piece.ticks.tolist() == expected
+
+
+@pytest.mark.parametrize(("sign", "fine_ticks"), [("+", 6), ("-", -6)])
+def test_a_fine_time_is_added_or_taken_off_exactly(
+    tmp_path: Path, sign: str, fine_ticks: int
+) -> None:
+    """Coarse ticks of 2.5 ps and fine ones of 1/3 ps have 1/6 ps in common."""
+    fine = {"bits": [20, 4], "tick": "1/3 ps", "sign": sign}
+    path = write(tmp_path, tag(1000), tag(1001) | 3 << 20)
+    feed = opened(FEED | {"tick": "2.5 ps", "fine": fine}, path)
+    (piece,) = feed.pieces()
+    assert feed.time_base.tick == Fraction(1, 6)
+    exact = Fraction(15 * 1001 + fine_ticks, 6)
+    assert piece.times_ps.tolist() == [2500, floor(exact + Fraction(1, 2))]
+
+
+@pytest.mark.parametrize(
+    ("changes", "words"),
+    [
+        ({"wrap": "implicit"}, "not both"),
+        ({"wrap": "implicit", "marker": [], "record_bytes": 8, "time_bits": [0, 63]}, "62 bits"),
+        ({"fine": {"bits": [30, 4], "tick": "1 ps"}}, "fine bits"),
+        ({"fine": {"bits": [0, 40], "tick": "1 s"}, "record_bytes": 8}, "at most 2**62"),
+        ({"fine": {"bits": [0, 4], "tick": "1/999999999999989 s"}}, "below 2**61"),
+        ({"fine": {"bits": [0, 4], "tick": "1 ps", "sign": "x"}}, "sign"),
+    ],
+)
+def test_a_layout_whose_clock_cannot_be_is_refused(changes: dict[str, Any], words: str) -> None:
+    with pytest.raises(ValueError, match=re.escape(words)):
+        RecordLayout.model_validate(LAYOUT | changes)
 
 
 def test_a_record_may_come_byte_by_byte() -> None:

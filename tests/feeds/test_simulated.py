@@ -48,6 +48,20 @@ def test_seeds_differ() -> None:
     assert not np.array_equal(one.times_ps, two.times_ps)
 
 
+def test_marks_come_with_their_pieces() -> None:
+    simulated = feed("dip-scan.toml", duration="5 s")
+    pieces = list(simulated.pieces())
+    marks = [mark for piece in pieces for mark in piece.marks]
+    assert [(mark.time_ps, mark.key) for mark in marks] == [
+        (n * 2 * S, "position") for n in range(3)
+    ]
+    assert marks[0].value == -90.0
+    for piece in pieces:
+        assert piece.begin_ps is not None
+        assert piece.end_ps is not None
+        assert all(piece.begin_ps <= mark.time_ps < piece.end_ps for mark in piece.marks)
+
+
 def test_time_base_and_truth() -> None:
     simulated = feed("emitter-pulsed-clock.toml", seed=5)
     assert simulated.time_base.tick == Fraction(8)

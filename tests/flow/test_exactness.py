@@ -17,11 +17,20 @@ from tests.flow.conftest import Caller
 def integers(run: Path) -> dict[str, np.ndarray]:
     """Every integer and floating-point array of the tallies and estimates of a run."""
     found: dict[str, np.ndarray] = {}
-    skipped = ("run/health/backlog", "run/health/lag_behind")
+    counted = (
+        "received",
+        "kept",
+        "dropped_",
+        "in_flight",
+        "gap",
+        "largest_disorder",
+        "last_tag_ps",
+    )
+    tallied = ("run/hbt", "run/estimates", "run/channels")
+    wanted = (*tallied, *(f"run/health/{name}" for name in counted))
 
     def take(name: str, node: h5py.Group | h5py.Dataset) -> None:
-        tallied = name.startswith(("run/hbt", "run/estimates", "run/channels", "run/health"))
-        if isinstance(node, h5py.Dataset) and tallied and not name.startswith(skipped):
+        if isinstance(node, h5py.Dataset) and name.startswith(wanted):
             found[name] = np.asarray(node[()])
 
     with h5py.File(run / "latest.h5") as file:

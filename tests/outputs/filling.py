@@ -29,6 +29,7 @@ def main() -> None:
     clock = FakeClock()
     writer = RunWriter(RunFolder.create(folder, "run"), make_header(), clock)
     writer.replace_snapshot(make_snapshot())
+    writer.settle()
     try:
         for index in range(100_000):
             if index == 20:
@@ -37,6 +38,7 @@ def main() -> None:
             writer.add_row(make_row(index))
             if first == "latest":
                 writer.replace_snapshot(make_snapshot(index))
+                writer.settle()
             elif first == "log":
                 writer.event("warning", text="x" * 1000)
     except ResultsError as error:

@@ -184,6 +184,7 @@ def test_a_cut_off_copy_of_a_growing_history_is_told_and_not_waited_for(
     writer = RunWriter(RunFolder.create(tmp_path, "run"), make_header())
     writer.add_row(make_row(0))
     writer.replace_snapshot(make_snapshot())
+    writer.settle()
     copied = shutil.copytree(tmp_path / "run-0001", tmp_path / "copied")
     writer.close(make_snapshot())
     assert open_run(copied).history("rate_a")["value"].tolist() == [1000.0]

@@ -100,6 +100,7 @@ def test_a_snapshot_is_due_for_every_slice_of_a_second_but_not_more_often(
         clock.now = start + index + shift
         assert writer.snapshot_due()
         writer.replace_snapshot(make_snapshot(index))
+        writer.settle()
         due += 1
     assert due == early.size
     start = clock.now
@@ -107,6 +108,7 @@ def test_a_snapshot_is_due_for_every_slice_of_a_second_but_not_more_often(
         clock.now = start + 0.01 * index
         if writer.snapshot_due():
             writer.replace_snapshot(make_snapshot(index))
+            writer.settle()
             due += 1
     assert due == early.size + 1
     assert SNAPSHOT_S <= 1
@@ -117,6 +119,7 @@ def test_latest_is_never_ahead_of_history_and_log(tmp_path: Path, writer: RunWri
         writer.add_row(make_row(index))  # the clock stands: a batch that waits
     assert open_run(tmp_path / "run").history("rate_a")["value"].size == 0
     writer.replace_snapshot(make_snapshot(2))
+    writer.settle()
     assert open_run(tmp_path / "run").history("rate_a")["value"].tolist() == [1000, 1001, 1002]
 
 
@@ -142,6 +145,7 @@ def test_the_identity_of_a_run_stays_while_its_update_time_moves(
     before = open_run(tmp_path / "run").about
     time.sleep(0.002)
     writer.replace_snapshot(make_snapshot())
+    writer.settle()
     after = open_run(tmp_path / "run").about
     assert {k for k in before if before[k] != after[k]} == {"updated_utc"}
     assert before["updated_utc"] < after["updated_utc"]
@@ -172,9 +176,12 @@ def test_a_snapshot_that_cannot_be_written_leaves_the_previous_one_whole(
         raise OSError(number, os.strerror(number))
 
     writer.replace_snapshot(make_snapshot(1))
+
+    writer.settle()
     monkeypatch.setattr("tagstream.outputs.atomic.os.replace", fail)
     with pytest.raises(ResultsError, match=r"latest\.h5: results cannot be written"):
         writer.replace_snapshot(make_snapshot(2))
+        writer.settle()
     monkeypatch.undo()
     assert open_run(tmp_path / "run").health["received"] == 21
 
@@ -206,9 +213,11 @@ def test_a_reader_that_holds_latest_open_keeps_its_numbers_and_stops_nobody(
     tmp_path: Path, writer: RunWriter
 ) -> None:
     writer.replace_snapshot(make_snapshot(1))
+    writer.settle()
     with h5py.File(tmp_path / "run/latest.h5", "r") as held:
         for step in range(2, 6):
             writer.replace_snapshot(make_snapshot(step))
+            writer.settle()
             assert open_run(tmp_path / "run").health["received"] == 20 + step
         assert held["run/health/received"][()] == 21
         assert held["run/hbt/counts"][()].size == 11

@@ -20,6 +20,7 @@ def main() -> None:
     for index in itertools.count():
         writer.add_row(make_row(index))
         writer.replace_snapshot(make_snapshot(index))
+        writer.settle()
 
 
 if __name__ == "__main__":

@@ -139,6 +139,8 @@ def test_all_problems_at_once(file: Path) -> None:
         ("[results]", "[results]\nevry = 3", ["[results] evry", "unknown key"]),
         ('name = "emitter-3"', 'name = "../x"', ["[results] name", "../x"]),
         ('spans = ["10 s", "1 min"]', 'spans = "10 s"', ["[rolling] spans", "a list"]),
+        ('bin = "100 ps"', 'bin = "100 ps"\nsplit_by = "a/b"', ["hbt split_by", "without /"]),
+        ('bin = "100 ps"', 'bin = "100 ps"\nsplit_limit = 9', ["hbt split_limit", "split_by"]),
     ],
 )
 def test_one_problem_each(file: Path, old: str, new: str, words: list[str]) -> None:
@@ -219,3 +221,52 @@ def test_paths_of_every_section_are_relative_to_the_file(file: Path) -> None:
     assert settings.recording.folder == file.parent / "tags"
     assert settings.security is not None
     assert settings.security.own_keys == file.parent / "keys"
+
+
+def test_a_split_counts_for_the_memory(file: Path) -> None:
+    # 2501 bins of 24 bytes for each value: 4 MB for 64 of them, 60 MB for 1000.
+    text = GOOD.replace('max_lag = "125 ns"', 'max_lag = "125 ns"\nsplit_by = "power"')
+    text = text.replace("[rolling]", '[rolling]\nmemory = "20 MB"')
+    file.write_text(text)
+    assert load_settings(file).settings.tallies[0].split_by == "power"
+    many = text.replace('split_by = "power"', 'split_by = "power"\nsplit_limit = 1000')
+    assert "split_limit" in problems(file, many)[0]
+
+
+def test_a_feed_that_others_can_reach_warns(file: Path) -> None:
+    records = (
+        'kind = "tcp"\nlisten = "{}"\nrecord_bytes = 8\ntick = "1 ps"\n'
+        "time_bits = [0, 48]\nchannel_bits = [48, 8]"
+    )
+    for address, warned in (("127.0.0.1:7700", False), ("0.0.0.0:7700", True)):
+        text = GOOD.replace('kind = "recording"\npath = "events.h5"', records.format(address))
+        file.write_text(text)
+        found = [w for w in load_settings(file).warnings if "reached by others" in w]
+        assert bool(found) == warned
+
+
+def test_only_a_file_that_is_whole_is_asked_for_its_interval(file: Path) -> None:
+    records = (
+        'kind = "records"\npath = "a"\nfollow = {}\nrecord_bytes = 8\ntick = "1 ps"\n'
+        "time_bits = [0, 48]\nchannel_bits = [48, 8]"
+    )
+    for follow in ("false", "true"):
+        text = GOOD.replace('kind = "recording"\npath = "events.h5"', records.format(follow))
+        file.write_text(text)
+        found = [w for w in load_settings(file).warnings if "begin, end" in w]
+        assert bool(found) == (follow == "false")
+
+
+def test_the_common_tick_of_both_fields_is_the_native_one(file: Path) -> None:
+    records = (
+        'kind = "records"\npath = "a"\nrecord_bytes = 8\ntick = "5 ns"\n'
+        "time_bits = [0, 40]\nchannel_bits = [56, 8]\n"
+        'fine = { bits = [40, 10], tick = "10 ps", sign = "-" }'
+    )
+    text = GOOD.replace('kind = "recording"\npath = "events.h5"', records)
+    file.write_text(text.replace("[[tally]]", "[[tally]]", 1))
+    loaded = load_settings(file)
+    assert any("native tick (10 ps)" in w for w in loaded.warnings)
+    again = file.parent / "again.toml"
+    again.write_text(loaded.to_toml())
+    assert load_settings(again).settings == loaded.settings

@@ -56,6 +56,23 @@ def test_jitter_has_the_stated_sigma_and_dark_counts_their_rate() -> None:
     assert 1000 <= dark.min() <= dark.max() < 1000 + 10**10
 
 
+def test_delays_and_their_drift() -> None:
+    hour = 3600 * 10**12
+    late = Arm("a", 1.0, delay_ps=500, delay_drift=1000.0)
+    early = Arm("b", 1.0, delay_drift=-1000.0)
+    detectors = Detectors([late, early])
+    assert detectors.reach_ps == 1_000_000  # as early as tags may become
+    photons = Photons(np.array([0.0, 0.0]), np.array([0, 1], np.uint8))
+    for hours, expected in (
+        (0, [500, 0]),
+        (10, [10_500, -10_000]),
+        (2000, [1_000_500, -1_000_000]),
+    ):
+        begin = hours * hour
+        times_ps, _ = detectors.respond(photons, begin, 1, np.random.default_rng(1))
+        assert (times_ps - begin).tolist() == expected
+
+
 def test_no_tag_is_earlier_than_the_reach() -> None:
     detectors = Detectors([Arm("a", 1.0, jitter_sigma_ps=100.0)])
     assert detectors.reach_ps == 1000

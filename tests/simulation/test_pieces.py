@@ -20,6 +20,50 @@ SCENES = {
     "pulsed": scenario(PULSED, ARM, CLOCK),
     "fast": scenario(PULSED, ARM, "[clock]\ninput = 300\n", 'tick = "1/8192 s"'),
 }
+EFFECTS = (
+    ARM
+    + """
+afterpulse_probability = 0.05
+afterpulse_time = "300 ns"
+crosstalk_probability = 0.02
+crosstalk_delay = "3 ns"
+delay = "40 us"
+delay_drift_per_hour = "-1 us"
+"""
+)
+DRIFT = '[drift]\nfading_per_hour = 0.9\nswing = 0.5\nperiod = "1 s"\n'
+PULSES = 'period = "40 ns"\nphotons_per_pulse = 0.002\ng2_zero = 0.1\n'
+BLINKS = 'on_time = "1 us"\noff_time = "1 us"\n'
+MORE = {
+    "thermal": 'rate = "50 kHz"\ncoherence_time = "1 us"',
+    "blinking-emitter": 'rate = "100 kHz"\nt0 = "30 ns"\n' + BLINKS,
+    "shelving-emitter": """
+rate = "50 kHz"
+excitation_time = "9 ns"
+lifetime = "5 ns"
+shelving = 0.1
+shelf_time = "10 us"
+""",
+    "pulsed-blinking-emitter": PULSES + BLINKS,
+    "pairs": 'rate = "50 kHz"\ncorrelation_fwhm = "1 us"',
+    "pulsed-pairs": 'period = "1 us"\npairs_per_pulse = 0.05',
+    "unbalanced-interferometer": PULSES + 'overlap = 0.9\nseparation = "3 ns"',
+    "two-photon-interference": PULSES + 'overlap = 0.9\nalternate = "100 ms"',
+    "dip-scan": """
+rate = "50 kHz"
+shape = "sinc"
+overlap = 0.9
+centre = 0.0
+width = 1.0
+from = -1.0
+to = 1.0
+points = 5
+dwell = "70 ms"
+""",
+}
+LASTING = {
+    kind: scenario(f'kind = "{kind}"\n{keys}', EFFECTS, DRIFT) for kind, keys in MORE.items()
+}
 FEW = scenario(SLOW, 'efficiency = 0.9\ndark_rate = "500 Hz"\njitter_fwhm = "1 ms"')
 
 
@@ -55,6 +99,22 @@ def test_a_longer_run_begins_with_the_shorter_one(cut: int, seed: int) -> None:
     inside = whole_times < cut
     assert times.tolist() == whole_times[inside].tolist()
     assert inputs.tolist() == whole_inputs[inside].tolist()
+
+
+@pytest.mark.parametrize("name", LASTING)
+def test_runs_of_every_kind_of_light_are_determined(name: str) -> None:
+    """A longer run begins with the shorter one, with all that detectors and drift do; in order."""
+    scene = LASTING[name]
+    whole_times, whole_inputs = tags(scene, 3, S // 2)
+    times, inputs = tags(scene, 3, S // 5)
+    inside = whole_times < S // 5
+    assert times.size > 1000
+    assert np.array_equal(times, whole_times[inside])
+    assert np.array_equal(inputs, whole_inputs[inside])
+    assert np.all(np.diff(whole_times) >= 0)
+    assert not np.array_equal(tags(scene, 4, S // 5)[0], times)
+    for number in (1, 2):
+        assert np.diff(times[inputs == number]).min() >= 60_000
 
 
 @pytest.mark.parametrize("name", SCENES)

@@ -34,7 +34,7 @@ def test_central_over_side_peaks_as_the_truth_says() -> None:
         PULSED.replace("1 ns", "2.5 ns"),
         'efficiency = 0.9\njitter_fwhm = "700 ps"\ndark_rate = "200 kHz"',
     )
-    pair = arms(scene, 1, S // 4)
+    pair = arms(scene, 1, S // 16)
     for window in (1_000, 5_000, 12_500):
         value, sigma = measured(pair, window)
         expected = g2_measured(scene, float(window))

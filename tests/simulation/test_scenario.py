@@ -93,12 +93,32 @@ def test_a_mistake_is_named_with_what_would_be_right(
         ("[clock]\ninput = 0\ndivider = 0\n", "[clock] divider: found 0"),
         ("[clock]\ninput = 2\n", "input: found 2 more than once"),
         ('[truth]\nwindow = "0 ns"\n', "[truth] window"),
+        ("afterpulse_probability = 0.1\n", "`afterpulse_time` together"),
+        ("crosstalk_probability = 0.1\n", "`crosstalk_delay` together"),
+        ("afterpulse_probability = 1.0\n", "[[detector]] 2 afterpulse_probability: found 1.0"),
+        ('[drift]\nswing = 0.1\nperiod = "1 h"\n', "right would be at most 0.909091"),
+        (
+            "[drift]\nfading_per_hours = 0.1\n",
+            '[drift] fading_per_hours: unknown key; nearest known is "fading_per_hour"',
+        ),
+        (
+            '[[detector]]\ninput = 3\nport = "herald"\nefficiency = 1.0\n',
+            'port: found "herald", which this source has not; known are transmitted, reflected',
+        ),
         ("afterglow = 1\n", "[[detector]] 2 afterglow: unknown key"),
         ('[truth]\nwindows = "1 ns"\n', '[truth] windows: unknown key; nearest known is "window"'),
     ],
 )
 def test_mistakes_in_further_tables(more: str, expected: str) -> None:
     assert any(expected in problem for problem in problems(scenario_text(more=more)))
+
+
+def test_a_herald_alone_sees_no_light_of_the_splitter() -> None:
+    text = scenario_text('kind = "pairs"\nrate = "1 MHz"')
+    text = text[: text.rindex("[[detector]]")].replace('"transmitted"', '"herald"')
+    assert problems(text) == [
+        "bad.toml: [[detector]]: only a herald; right would be a detector at the splitter too"
+    ]
 
 
 def test_a_window_longer_than_the_period() -> None:

@@ -20,6 +20,8 @@ def test_truth_of_pulsed_light_is_plain_and_complete() -> None:
     assert json.loads(json.dumps(known)) == known
     assert set(known) == {
         *("source", "g2_zero", "signal_fraction", "period_ps", "g2_zero_measured"),
+        *("brightness_hz", "splitting_ratio"),
+        *("incoming_rate_input_1_hz", "incoming_rate_input_2_hz"),
         *("g2_zero_window_ps", "rate_input_1_hz", "rate_input_2_hz", "rate_input_9_hz"),
     }
     assert known["rate_input_9_hz"] == 20e6
@@ -44,12 +46,38 @@ def test_one_detector_has_rates_but_no_g2() -> None:
 @pytest.mark.parametrize("file", SHIPPED, ids=[file.stem for file in SHIPPED])
 def test_shipped_scenarios_give_the_rates_they_state(file: Path) -> None:
     scene = load_scenario(file)
-    known = truth(scene)
-    inputs = tags(scene, 11, S)[1]
+    seconds = 62 if scene.kind == "dip-scan" else 0.4  # of a scan the truth is that of all of it
+    known = truth(scene, int(seconds * S))
+    assert json.loads(json.dumps(known)) == known
+    inputs = tags(scene, 11, int(seconds * S))[1]
     for detector in scene.detectors:
-        rate = known[f"rate_input_{detector.input}_hz"]
-        assert (inputs == detector.input).sum() == pytest.approx(rate, abs=4 * sqrt(rate))
+        counts = known[f"rate_input_{detector.input}_hz"] * seconds
+        assert (inputs == detector.input).sum() == pytest.approx(counts, abs=4 * sqrt(counts))
 
 
-def test_four_scenarios_are_shipped() -> None:
-    assert len(SHIPPED) >= 4
+def test_a_scenario_for_each_experiment_is_shipped() -> None:
+    assert {file.stem for file in SHIPPED} >= {
+        *("emitter-cw", "emitter-pulsed", "blinking-emitter", "heralded-source", "interferometer"),
+        *("polarisation", "dip-scan", "detector-characterisation", "stability"),
+    }
+    assert {load_scenario(file).kind for file in SHIPPED} > {"thermal", "pairs", "shelving-emitter"}
+
+
+def test_what_is_stated_of_each_detector() -> None:
+    detector = """
+efficiency = 0.4
+jitter_fwhm = "300 ps"
+dead_time = "40 ns"
+dark_rate = "2 kHz"
+delay = "7 ns"
+afterpulse_probability = 0.02
+afterpulse_time = "100 ns"
+"""
+    known = truth(scenario(detector=detector))
+    assert known["incoming_rate_input_1_hz"] == pytest.approx(202_000)
+    assert known["rate_input_1_hz"] == pytest.approx(204_400, rel=0.002)  # 1 / (1 + 0.0081 - 0.02)
+    assert known["dead_time_input_2_ps"] == 40_000
+    assert known["dark_count_rate_input_2_hz"] == 2_000
+    assert known["timing_jitter_input_1_ps"] == pytest.approx(300)
+    assert known["afterpulse_probability_input_1"] == 0.02
+    assert known["delay_input_1_ps"] == 7_000

@@ -73,3 +73,20 @@ def test_a_long_span_advances_by_a_sixtieth() -> None:
 def test_at_most_64_parts(span: str, parts: tuple[int, int]) -> None:
     made = rolling(span)
     assert made.parts(made.spans_ps[0]) == parts
+
+
+def test_spans_begin_anew_but_the_run_goes_on() -> None:
+    spans = Spans(rolling("5 s"))
+    for index in range(4):
+        spans.add(index, slice_sums(1))
+    spans.restart()
+    run, five = spans
+    assert run.sums["t"]["counts"][0] == 1200
+    assert (five.begin_ps, five.end_ps) == (4 * 10**12, 4 * 10**12)
+    assert list(five.sums["t"]["counts"]) == [0, 0, 0]
+    assert five.sums["t"]["expected_pairs"] == 0.0
+    spans.add(4, slice_sums(2))
+    _, five = spans
+    assert (five.begin_ps, five.end_ps) == (4 * 10**12, 5 * 10**12)
+    assert five.sums["t"]["counts"][0] == 600
+    assert float(five.sums["t"]["expected_pairs"]) == pytest.approx(0.2)

@@ -74,3 +74,13 @@ def laser_pieces(duration_ps: int, disorder_ps: int = 0) -> Iterator[tuple[Tags,
         end = min(begin + step, duration_ps)
         found = laser(begin, end, rng)
         yield (disordered(found, disorder_ps, rng) if disorder_ps else found), begin, end
+
+
+def steady_pieces(rate_hz: int, seconds: int, piece_ms: int = 50) -> Iterator[tuple[Tags, int, int]]:
+    """Two channels (1 and 2) of half the rate each, in pieces of equal length."""
+    rng = np.random.default_rng(4)
+    length_ps = piece_ms * 10**9
+    for begin in range(0, seconds * SECOND, length_ps):
+        count = rng.poisson(rate_hz * piece_ms / 1000)
+        times = np.sort(rng.integers(begin, begin + length_ps, count))
+        yield (times, rng.integers(1, 3, count).astype(np.uint8)), begin, begin + length_ps

@@ -1,0 +1,31 @@
+"""The numbers of the health of a run that an alert may name."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+
+from tagstream.counters import DROP_REASONS
+
+HEALTH_NUMBERS = (
+    "received",
+    "kept",
+    *(f"dropped_{reason}" for reason in DROP_REASONS),
+    "in_flight",
+    "gaps",
+    "gap_time_ps",
+    "largest_disorder_ps",
+    "backlog_blocks",
+    "lag_behind_s",
+    "last_tag_ps",
+    "last_tag_age_s",
+    "queued_s",
+    "shed_fraction",
+    "degraded",  # 1 while results cannot be written
+    "starved",  # 1 while no tags come
+    "behind",  # 1 while tags come faster than they are processed
+)
+
+
+def health_names(channels: Iterable[str]) -> list[str]:
+    """All of them, with how long each channel has been silent."""
+    return [*HEALTH_NUMBERS, *(f"silent_{name}_s" for name in channels)]
