@@ -95,6 +95,7 @@ class Pipeline:
         self._settings_text, self._around = settings_text, around
         self.health: Mapping[str, Number] = {"state": str(State.STARTING)}
         self.elsewhere = Counters()
+        self._gap_from_ps: int | None = None  # where an earlier process of this run stopped
         self._stream = stream if first is None else chain([first], stream)
         self._now = NOTHING if first is None else first
         self.described = first is not None
@@ -198,6 +199,9 @@ class Pipeline:
     def _take(self, blocks: list[Block]) -> None:
         slice_ps = self.settings.rolling.slice_ps
         for block in blocks:
+            if self._gap_from_ps is not None:
+                gap_ps, self._gap_from_ps = block.begin_ps - self._gap_from_ps, None
+                self.count_besides(Counters(gaps=1, gap_time_ps=gap_ps))
             if block.opens and self.counters.gaps:
                 self.sink.event("gap", block.begin_ps, gaps=self.counters.gaps)
             for index, piece in cut_at_slices(block, slice_ps):
@@ -282,6 +286,7 @@ class Pipeline:
         self._splits.change(end_ps)
         self._slice_end_ps = end_ps
         self._last_seen_ps[:] = end_ps
+        self._gap_from_ps = end_ps
         self.count_besides(counters_of(going_on.counters))
 
     def _going_on(self) -> GoingOn | None:

@@ -38,5 +38,9 @@ class RecentValues:
 
     def columns(self, estimate: str) -> tuple[NDArray[np.float64], ...]:
         """time (end of the slice, s of stream time), value, lower, upper: float64, n each."""
-        rows = [(end_ps / PS_PER_S, *found[estimate]) for end_ps, found in self._rows]
+        rows = [
+            (end_ps / PS_PER_S, *found[estimate])
+            for end_ps, found in self._rows
+            if estimate in found  # the estimates of a run may change while it goes on
+        ]
         return tuple(np.array(rows, np.float64).reshape(-1, 4).T.copy())

@@ -98,6 +98,11 @@ class Source(Section, ABC):
         return None
 
     @property
+    def decay_ps(self) -> float:
+        """Mean time from pulse to photon, of pulsed light."""
+        return 0.0
+
+    @property
     @abstractmethod
     def photon_rate_hz(self) -> float:
         """Mean number of photons per second at the splitter."""

@@ -49,11 +49,6 @@ class PulsedSource(Source):
         return self.mean_photons, self.number_law
 
     @property
-    def decay_ps(self) -> float:
-        """Mean time from pulse to photon."""
-        return 0.0
-
-    @property
     def pulse_period(self) -> Fraction:
         """The period in ps."""
         return self.period_ps

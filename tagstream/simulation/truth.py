@@ -29,10 +29,11 @@ def truth(scenario: Scenario, duration_ps: int | None = None) -> dict[str, Any]:
     per second of each detector and of the clock. g2_zero_measured: between the two detectors, in
     a window of g2_zero_window_ps (0: a narrow bin); absent when there is one detector.
     period_ps, lifetime_ps: of pulsed light. Of each detector what it has of
-    incoming_rate_input_<n>_hz (what its dead time hides included), dead_time, dark_count_rate,
-    timing_jitter (full width at half maximum), afterpulse_probability, delay. splitting_ratio:
-    photons counted in the first over those in the second of the two detectors. What a source
-    adds is described where it is made (`known`); it is that of the mean light of the run.
+    incoming_rate_input_<n>_hz (each photon that it would count without dead time),
+    dead_time, dark_count_rate, timing_jitter (full width at half maximum),
+    afterpulse_probability, delay. splitting_ratio: photons counted in the first over those in
+    the second of the two detectors. What a source adds is described where it is made (`known`);
+    it is that of the mean light of the run.
     """
     duration_ps = scenario.duration_ps if duration_ps is None else duration_ps
     source = scenario.source
@@ -43,6 +44,8 @@ def truth(scenario: Scenario, duration_ps: int | None = None) -> dict[str, Any]:
     known["brightness_hz"] = source.photon_rate_hz
     if source.pulse_period is not None:
         known["period_ps"] = float(source.pulse_period)
+    if source.decay_ps > 0:
+        known["lifetime_ps"] = source.decay_ps
     known |= dict(_rates(scenario, duration_ps)) | dict(_of_detectors(scenario, duration_ps))
     if scenario.pair(scenario.arms) is not None:
         known |= _of_two_detectors(scenario, duration_ps)

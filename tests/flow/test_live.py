@@ -58,7 +58,9 @@ def integers(run: Run) -> Integers:
 
 
 def all_received(daemon: Daemon, tags: int) -> None:
-    daemon.wait_for(lambda health: health.get("received", 0) >= tags and health.get("in_flight") == 0)
+    daemon.wait_for(
+        lambda health: health.get("received", 0) >= tags and health.get("in_flight") == 0
+    )
 
 
 def test_what_was_recorded_live_replays_to_the_same_integers(
@@ -157,14 +159,14 @@ def test_after_kill_9_the_run_goes_on(
     daemon.wait_for(lambda health: health.get("received", 0) >= int(rng.integers(1, 300_000)))
     daemon.stop(signal.SIGKILL)
     before = package.open_run(daemon.run)
-    shown = integers(before)
+    shown, received = integers(before), int(before.health["received"])
     rows = before.history("g2_zero")["begin_ps"].size
     daemon.start("--resume")
     after = package.open_run(daemon.run)
     assert after.health["restarts"] == 1
     assert integers(after)["counts"] == shown["counts"]
     play(light, daemon.address, "--fast")
-    tags = int(before.health["received"]) + told["counts"]["tags"]
+    tags = received + told["counts"]["tags"]
     daemon.wait_for(lambda health: health.get("received", 0) >= tags)
     assert daemon.stop() == 143
     run = package.open_run(daemon.run)

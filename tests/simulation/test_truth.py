@@ -20,7 +20,7 @@ def test_truth_of_pulsed_light_is_plain_and_complete() -> None:
     assert json.loads(json.dumps(known)) == known
     assert set(known) == {
         *("source", "g2_zero", "signal_fraction", "period_ps", "g2_zero_measured"),
-        *("brightness_hz", "splitting_ratio"),
+        *("brightness_hz", "splitting_ratio", "lifetime_ps"),
         *("incoming_rate_input_1_hz", "incoming_rate_input_2_hz"),
         *("g2_zero_window_ps", "rate_input_1_hz", "rate_input_2_hz", "rate_input_9_hz"),
     }

@@ -76,7 +76,9 @@ def laser_pieces(duration_ps: int, disorder_ps: int = 0) -> Iterator[tuple[Tags,
         yield (disordered(found, disorder_ps, rng) if disorder_ps else found), begin, end
 
 
-def steady_pieces(rate_hz: int, seconds: int, piece_ms: int = 50) -> Iterator[tuple[Tags, int, int]]:
+def steady_pieces(
+    rate_hz: int, seconds: int, piece_ms: int = 50
+) -> Iterator[tuple[Tags, int, int]]:
     """Two channels (1 and 2) of half the rate each, in pieces of equal length."""
     rng = np.random.default_rng(4)
     length_ps = piece_ms * 10**9
