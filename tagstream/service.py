@@ -6,7 +6,7 @@ import os
 import signal
 import time
 from collections.abc import Callable, Iterable
-from concurrent.futures import Future
+from concurrent.futures import Future, wait
 from queue import Empty, SimpleQueue
 from types import FrameType
 from typing import Any, TypeVar
@@ -16,6 +16,7 @@ from tagstream.pipeline import Pipeline, State
 
 T = TypeVar("T")
 LONGEST_NAP_S = 0.1  # how late a stop may be noticed while waiting
+LOOK_S = 0.05  # how often a run is looked after
 REFRESH_S = 1.5  # while no slice ends, results are shown again this often
 
 
@@ -164,11 +165,10 @@ class RunLoop:
 def supervise(counting: Future[State], looks: Iterable[Callable[[], None]]) -> State:
     """Look after a run, again and again, until its counting thread has ended.
 
-    looks: each is short; at least one of them waits a little. Returns, or raises, what the
-    counting did.
+    looks: each is short. Returns, or raises, what the counting did.
     """
     looks = list(looks)
-    while not counting.done():
+    while not wait([counting], LOOK_S).done:
         for look in looks:
             look()
     return counting.result()

@@ -54,6 +54,17 @@ def as_json(run: Run) -> dict[str, Any]:
     }
 
 
+def health_as_json(run: Run) -> dict[str, Any]:
+    """The health as plain data, with whether a process writes the run."""
+    return {"run": str(run.path), "written_now": run.is_live, **_plain(run.health)}
+
+
+def is_well(run: Run) -> bool:
+    """Whether the run goes on, or ended by itself or when it was told to."""
+    state = run.health["state"]
+    return state in ("finished", "stopped") or (state == "running" and run.is_live)
+
+
 def format_estimate(found: Estimate) -> str:
     """A value with its interval: "0.0412 +0.0006 -0.0006", "< 0.012", "-"."""
     if found.interval == "none" or isnan(found.value):

@@ -9,7 +9,7 @@ import click
 
 from tagstream.cli.options import run_argument
 
-ENDED = ("finished", "stopped", "input_broken", "failed")
+ENDED = ("finished", "stopped", "input_broken", "failed", "interrupted")
 
 
 @click.command()
@@ -30,7 +30,7 @@ def command(run: Path, every: float) -> None:
     from tagstream.table import format_run
 
     while True:
-        opened = open_run(run)
+        opened = open_run(run).still()
         click.clear()
         click.echo(format_run(opened))
         if opened.health["state"] in ENDED:

@@ -6,6 +6,7 @@ lock and as a whole file; the history, while it grows, in SWMR mode.
 
 from __future__ import annotations
 
+import io
 from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any, Generic, TypeVar
@@ -62,10 +63,23 @@ def open_run(path: str | Path) -> Run:
 
 
 class Run:
-    """A run folder. Attributes read the files at the moment they are used."""
+    """A run folder. Attributes read the files at the moment they are used.
 
-    def __init__(self, path: Path) -> None:
-        self.path = path
+    latest: the content of latest.h5 that is to be shown, absent what is there at that moment.
+    """
+
+    def __init__(self, path: Path, latest: bytes | None = None) -> None:
+        self.path, self._content = path, latest
+
+    def still(self) -> Run:
+        """The same run as it is now: all that latest.h5 says is of one moment.
+
+        Raises ResultsError when it cannot be read.
+        """
+        try:
+            return Run(self.path, (self.path / "latest.h5").read_bytes())
+        except OSError as error:
+            raise _not_results(self.path / "latest.h5", error) from error
 
     def __repr__(self) -> str:
         return f"Run({str(self.path)!r})"
@@ -180,18 +194,19 @@ class Run:
         estimates[estimate], spans[span]
 
     def _latest(self) -> _Entry:
-        return _Entry(self.path / "latest.h5")
+        return _Entry(self.path / "latest.h5", self._content)
 
 
 class _Entry:
     """The entry of latest.h5, open for the time of a `with`."""
 
-    def __init__(self, path: Path) -> None:
-        self._path = path
+    def __init__(self, path: Path, content: bytes | None) -> None:
+        self._path, self._content = path, content
 
     def __enter__(self) -> h5py.Group:
         try:
-            self._file = h5py.File(self._path, "r", locking=False)
+            source = self._path if self._content is None else io.BytesIO(self._content)
+            self._file = h5py.File(source, "r", locking=False)
         except OSError as error:
             raise _not_results(self._path, error) from error
         if at.ENTRY not in self._file:

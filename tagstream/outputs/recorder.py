@@ -92,6 +92,7 @@ class Recorder:
             self._guarded(self._end_segment)
         if self._into is None or not (self._writer is not None or self._begin(piece)):
             self._lose(piece)
+            self._look()
             return
         try:
             self._write(piece)

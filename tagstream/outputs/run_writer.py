@@ -7,7 +7,7 @@ import socket
 import time
 import uuid
 from collections.abc import Callable, Mapping
-from contextlib import ExitStack
+from contextlib import ExitStack, suppress
 from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
@@ -152,6 +152,8 @@ class RunWriter:
                 snapshot = replace(snapshot, health={**snapshot.health, "state": "failed"})
                 raise
             finally:
+                with suppress(ResultsError):  # of the one before; what counts is the last one
+                    self._files.settle()
                 self._write_latest(snapshot)
 
 

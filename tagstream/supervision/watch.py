@@ -17,8 +17,6 @@ from tagstream.supervision.service_manager import ServiceManager
 if TYPE_CHECKING:
     from tagstream.launch import Plan, Started
 
-LOOK_S = 0.05  # how long one look may wait for a request
-
 
 class Watch:
     """Looks after a run, one short `look` after the other. A context manager.
@@ -44,10 +42,8 @@ class Watch:
     def look(self) -> None:
         """Answer requests, start programs of alerts, reload, tell the service manager."""
         if self._server is not None:
-            self._server.poll(LOOK_S)
+            self._server.poll(0.0)
             self._follow_the_run()
-        else:
-            self._stop.wait(LOOK_S)
         self._run.sinks.look()
         if self._stop.take_reload() and self._plan.serves:
             reload(self._plan, self._run)

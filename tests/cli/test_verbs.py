@@ -73,9 +73,7 @@ def test_a_missing_input_file_is_told_by_check(settings: Path, tagstream: Caller
     assert "none.h5 does not exist" in done.err
 
 
-def test_settings_of_a_live_feed_replay(
-    settings: Path, recording: Path, tagstream: Caller
-) -> None:
+def test_settings_of_a_live_feed_replay(settings: Path, recording: Path, tagstream: Caller) -> None:
     text = settings.read_text()
     begin, end = text.index("[feed]"), text.index("[channels.arm_a]")
     live = '[feed]\nkind = "zmq"\naddress = "tcp://127.0.0.1:5570"\n[control]\n'

@@ -179,8 +179,8 @@ def test_a_snapshot_that_cannot_be_written_leaves_the_previous_one_whole(
 
     writer.settle()
     monkeypatch.setattr("tagstream.outputs.atomic.os.replace", fail)
+    writer.replace_snapshot(make_snapshot(2))
     with pytest.raises(ResultsError, match=r"latest\.h5: results cannot be written"):
-        writer.replace_snapshot(make_snapshot(2))
         writer.settle()
     monkeypatch.undo()
     assert open_run(tmp_path / "run").health["received"] == 21
