@@ -25,7 +25,7 @@ from tagstream.supervision.recording import Recording
 from tagstream.supervision.resuming import Resumption
 from tagstream.supervision.sinks import Announcing, Enduring, ResultsOnly
 from tagstream.supervision.state import Around, Flow
-from tagstream.threads import OneThread, ahead
+from tagstream.threads import OneThread, TimedThread, ahead
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,8 +72,9 @@ class Threads:
     files does all HDF5; where the feed is a file it reads as well. receiving serves a live feed.
     """
 
-    def __init__(self) -> None:
-        self.files, self.receiving = OneThread("files"), OneThread("receiving")
+    def __init__(self, load: Load) -> None:
+        self.files = TimedThread("files", lambda seconds: load.add("files", seconds))
+        self.receiving = OneThread("receiving")
         self.conditioning, self.counting = OneThread("conditioning"), OneThread("counting")
 
     def warm_up(self) -> None:
@@ -114,10 +115,10 @@ def started(plan: Plan, stop: StopRequest) -> Iterator[Started]:
     """
     settings = plan.loaded.settings
     with ExitStack() as opened:
-        threads = Threads()
+        load, flow = Load(), Flow(time.monotonic)
+        threads = Threads(load)
         opened.callback(threads.close)
         threads.warm_up()
-        load, flow = Load(), Flow(time.monotonic)
         requests = Requests()
         sinks = _sinks(plan, threads.files, requests)
         opened.callback(sinks.close)
@@ -136,7 +137,7 @@ def started(plan: Plan, stop: StopRequest) -> Iterator[Started]:
         def make(first: Conditioned | None = None) -> Pipeline:
             text = plan.loaded.to_toml()
             made = Pipeline(settings, text, plan.feed, stream, sinks.open, around, first)
-            for warning in plan.loaded.warnings:
+            for warning in (*plan.loaded.warnings, *getattr(plan.feed, "notes", ())):
                 made.sink.event("warning", text=warning)
             if recording is not None:
                 recording.follow(made)
@@ -200,10 +201,8 @@ def _stream(
     def condition(source: Iterator[Arrivals]) -> Generator[Conditioned]:
         return conditioned(source, settings, lambda: stop.requested)
 
-    return ahead(
-        _closing(receiving.load.timed("conditioning", pieces, condition), pieces),
-        threads.conditioning,
-    )
+    work = _closing(receiving.load.timed("conditioning", pieces, condition), pieces)
+    return receiving.load.consumed("counting", ahead(work, threads.conditioning))
 
 
 def _closing(work: Generator[Conditioned], source: Generator[Arrivals]) -> Generator[Conditioned]:

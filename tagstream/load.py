@@ -82,6 +82,16 @@ class Load:
         finally:
             results.close()
 
+    def consumed(self, stage: str, source: Generator[T]) -> Generator[T]:
+        """The items of a source; what is done between one and the next is work of the stage."""
+        try:
+            while (item := next(source, None)) is not None:
+                began = self._clock()
+                yield item
+                self.add(stage, self._clock() - began)
+        finally:
+            source.close()
+
     def timed_cpu(self, stage: str, source: Generator[T]) -> Generator[T]:
         """The items of a source that itself waits for others, such as a socket: processor time
         counts, which does not pass while it waits. Until the next item is asked for it is

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import faulthandler
 import os
 import signal
+import sys
 import time
 from collections.abc import Callable, Iterable
 from concurrent.futures import Future, wait
@@ -32,7 +34,10 @@ class StopRequest:
         self._reload = False
 
     def install(self) -> None:
-        """Take over SIGINT, SIGTERM and SIGHUP."""
+        """Take over SIGINT, SIGTERM and SIGHUP; SIGUSR1 shows on standard error what all threads
+        do, for a run that hangs."""
+        if sys.__stderr__ is not None:
+            faulthandler.register(signal.SIGUSR1, sys.__stderr__)
         for number in (signal.SIGINT, signal.SIGTERM):
             signal.signal(number, self._ask)
         signal.signal(signal.SIGHUP, self._ask_to_reload)

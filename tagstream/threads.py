@@ -7,6 +7,7 @@ thread runs when changes nothing: each stage takes the pieces of the one before 
 
 from __future__ import annotations
 
+import time
 from collections import deque
 from collections.abc import Callable, Generator
 from concurrent.futures import Future, ThreadPoolExecutor
@@ -32,6 +33,25 @@ class OneThread:
     def close(self) -> None:
         """Let what was submitted end."""
         self._pool.shutdown(wait=True)
+
+
+class TimedThread(OneThread):
+    """The same; the seconds that each call takes are told."""
+
+    def __init__(self, name: str, worked: Callable[[float], None]) -> None:
+        super().__init__(name)
+        self._worked = worked
+
+    def submit(self, function: Callable[..., Any], *arguments: Any) -> Future[Any]:
+        """Run a call when its turn comes."""
+        return super().submit(self._timed, function, *arguments)
+
+    def _timed(self, function: Callable[..., Any], *arguments: Any) -> Any:
+        began = time.monotonic()
+        try:
+            return function(*arguments)
+        finally:
+            self._worked(time.monotonic() - began)
 
 
 def ahead(source: Generator[T], thread: OneThread) -> Generator[T]:

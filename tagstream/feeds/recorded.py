@@ -109,6 +109,14 @@ class RecordingsFeed:
         return TimeBase(first.tick, ticks, utc, own_uuid)
 
     @property
+    def notes(self) -> list[str]:
+        """What a reader of a replay has to know."""
+        missing = max(segment.header.not_recorded_s for segment in self._segments)
+        if not missing:
+            return []
+        return [f"not comparable with the run itself: {missing:g} s of it were not recorded"]
+
+    @property
     def truth(self) -> dict[str, Any]:
         """As `Feed.truth`: what a simulation wrote into its recording."""
         return dict(self._segments[0].header.truth)

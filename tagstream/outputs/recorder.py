@@ -181,7 +181,9 @@ class Recorder:
     def _start(self) -> None:
         assert self._into is not None
         self._number += 1
-        header = replace(self._into.header, segment=self._number)
+        header = replace(
+            self._into.header, segment=self._number, not_recorded_s=round(self._hole_s, 6)
+        )
         path = segment_path(self._into.folder, self._number)
         self._writer = RecordingWriter(
             path, tick=self._into.tick, inputs_above_255=self._wide, header=header

@@ -31,7 +31,8 @@ class RecordingHeader:
 
     origin_ticks: native count at stream time zero. origin_utc: wall time of stream time zero,
     ISO 8601. run_uuid: the same in all segments of a run. segment: 1 for the first file.
-    truth: what a simulation knows of itself; anything that JSON can hold.
+    truth: what a simulation knows of itself; anything that JSON can hold. not_recorded_s: stream
+    time before this segment that the run counted but did not record.
     """
 
     title: str = ""
@@ -41,6 +42,7 @@ class RecordingHeader:
     segment: int = 1
     truth: Mapping[str, Any] = field(default_factory=dict)
     start_time: str = field(default_factory=utc_now)
+    not_recorded_s: float = 0.0
 
     def moved(self, shift_ps: int, tick: Fraction) -> tuple[int | None, str | None]:
         """(origin_ticks, origin_utc) of the instant `shift_ps` after stream time zero."""
@@ -72,6 +74,9 @@ def write_header(entry: h5py.Group, header: RecordingHeader, tick: Fraction) -> 
         _write_text(entry, "origin_ticks", str(header.origin_ticks))
     if header.origin_utc is not None:
         _write_text(entry, "origin_utc", header.origin_utc)
+    if header.not_recorded_s:
+        entry.create_dataset("not_recorded_s", data=header.not_recorded_s, dtype="<f8")
+        entry["not_recorded_s"].attrs["units"] = "s"
     if header.truth:
         note = entry.create_group("truth")
         note.attrs["NX_class"] = "NXnote"
@@ -101,6 +106,7 @@ def read_header(entry: h5py.Group) -> tuple[RecordingHeader, Fraction]:
         segment=int(entry["segment"][()]),
         truth=truth,
         start_time=_read_text(entry, "start_time") or "",
+        not_recorded_s=float(entry["not_recorded_s"][()]) if "not_recorded_s" in entry else 0.0,
     )
     tick = _required(entry, "native_tick")
     try:

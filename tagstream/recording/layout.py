@@ -11,6 +11,8 @@ A recording is an HDF5 file in the open NeXus conventions. Times are ps of strea
       native_tick                           text: "1 ps", "1/8192 s"
       origin_ticks                          decimal text: native count at stream time zero, if known
       origin_utc                            text, ISO 8601: wall time of stream time zero, if known
+      not_recorded_s             float64: stream time before this segment that was counted, but not
+                                 recorded, if any
       truth                      NXnote     JSON: what a simulation knows of itself, if anything
     /run/events                  NXevent_data, the tags as decoded, in arrival order
       event_id                   n, uint8 or uint16: number of the input

@@ -20,6 +20,19 @@ HEALTH_NUMBERS = (
     "last_tag_age_s",
     "queued_s",
     "shed_fraction",
+    "burst_losses",  # lost by sender or network while this program was behind
+    "malformed",
+    "sequence_missing",
+    "peers_denied",
+    "latency_s",
+    "latency_p99_s",
+    "mark_latency_s",
+    "recording_hole_s",
+    "recording_not_recorded",
+    "history_rows_lost",
+    "snapshots_skipped",
+    "disk_free_bytes",
+    "restarts",
     "degraded",  # 1 while results cannot be written
     "starved",  # 1 while no tags come
     "behind",  # 1 while tags come faster than they are processed

@@ -12,6 +12,8 @@ from tagstream.load import Load, RecentLoad, limiting
 from tagstream.recording.layout import Mark
 from tagstream.settings import Settings
 
+BLOCKED = 0.5  # of the time in which nothing could be received: we are behind
+Numbers = Mapping[str, int | float | str]
 Tap = Callable[[Generator[Arrivals]], Generator[Arrivals]]
 
 
@@ -32,6 +34,7 @@ class LiveReceiving:
         self._feed, self.load, self._live, self._tap = feed, load, live, tap
         self._recent = RecentLoad(load)
         self._mark_s = 0.0
+        self._missing = self._burst_losses = 0
         self.marks = MarkEntry(settings.conditioning.max_jump_ps, self._placed)
         self._shedder: Shedder | None = None
         if live and settings.conditioning.overload == "shed":
@@ -57,8 +60,21 @@ class LiveReceiving:
             **{f"busy_{stage}": round(part, 3) for stage, part in fractions.items()},
             "busiest": limiting(fractions),
             **shed_numbers,
+            "burst_losses": self._bursts(link, fractions, shed_numbers),
             "mark_latency_s": round(self._mark_s, 3),
         }
+
+    def _bursts(self, link: Numbers, fractions: Numbers, shed_numbers: Numbers) -> int:
+        """Messages that sender or network lost while we were behind: rates then read too low.
+
+        What is left out by ourselves is no loss of this kind: it is chosen blindly.
+        """
+        missing = int(link.get("sequence_missing", 0)) + int(link.get("lost_tags", 0))
+        more, self._missing = missing - self._missing, missing
+        behind = shed_numbers.get("shed_fraction", 0) or float(fractions["blocked"]) > BLOCKED
+        if more > 0 and behind:
+            self._burst_losses += more
+        return self._burst_losses
 
     def _placed(self, mark: Mark, waited_s: float) -> None:
         self._mark_s = waited_s

@@ -41,6 +41,7 @@ def binary_records(path: Path) -> None:
     np.array(words, "<u4").tofile(path)
 
 
+EMITTER = CONFIG / "scenarios/emitter-cw.toml"
 INPUTS: dict[str, Callable[[Path], None]] = {
     "photon-hdf5.toml": photon_hdf5,
     "binary-records.toml": binary_records,
@@ -57,6 +58,9 @@ def test_an_example_runs(name: str, tmp_path: Path, tagstream: Caller) -> None:
         file = tmp_path / ("input" + {"p": ".h5", "b": ".bin", "c": ".csv"}[name[0]])
         INPUTS[name](file)
         sets += ["--set", f'feed.path="{file}"']
+    elif name == "live.toml":  # simulated light in place of the socket
+        light = f'feed={{kind = "simulation", scenario = "{EMITTER}", duration = "2 s"}}'
+        sets += ["--set", light, "--set", 'publish.address="tcp://127.0.0.1:*"']
     else:
         sets += ["--set", 'feed.duration="2 s"']
     done = tagstream("run", CONFIG / name, *sets)

@@ -10,6 +10,7 @@ import numpy as np
 import pytest
 
 from tagstream.feeds import Arrivals
+from tagstream.feeds.recorded import RecordingsFeed
 from tagstream.outputs.recorder import FLUSH_S, RETRY_S, Recorded, Recorder
 from tagstream.recording import Mark, RecordingHeader, RecordingReader
 from tagstream.recording.recovery import recover_recordings
@@ -22,7 +23,7 @@ STEP = 10**9
 
 def piece(number: int, tags: int = 1000, **fields: Any) -> Arrivals:
     begin = number * STEP
-    times = int64(range(begin, begin + tags))
+    times = int64(list(range(begin, begin + tags)))
     inputs = np.full(tags, fields.pop("input", 3), fields.pop("dtype", np.uint16))
     return Arrivals(times, inputs, begin, begin + STEP, **fields)
 
@@ -106,6 +107,10 @@ def test_without_room_recording_pauses_and_the_hole_is_a_gap(tmp_path: Path) -> 
     with RecordingReader(tmp_path / "recording-0002.h5") as reader:
         (found,) = list(reader.pieces())
         assert found.gap_before
+        assert reader.header.not_recorded_s == pytest.approx(2 * STEP / 1e12)
+    segments = sorted(tmp_path.glob("recording-*.h5"))
+    (note,) = RecordingsFeed(segments, 10**12).notes
+    assert "0.002 s" in note
     names = [name for name, _ in bench.events]
     assert names == ["segment", "recording_paused", "recording_resumed", "segment"]
 

@@ -11,22 +11,26 @@ from pathlib import Path
 from typing import Any
 
 import kernels
+import live
 import program
 import scaling
 
 from tagstream import __version__
 
-PARTS = ("kernels", "program", "memory", "scaling", "start")
+PARTS = ("kernels", "program", "memory", "scaling", "start", "live")
 
 
 def main() -> None:
     """Run the chosen parts; write the figures as JSON."""
     parser = argparse.ArgumentParser(prog="tools/bench", description=__doc__)
-    parser.add_argument("--parts", nargs="+", choices=PARTS, default=PARTS)
+    parser.add_argument("parts", nargs="*", help=f"of {', '.join(PARTS)}; absent: all of them")
     parser.add_argument("--long", action="store_true", help="also 10^9 tags: 5 GB on disk")
     parser.add_argument("--folder", type=Path, help="where recordings are kept meanwhile")
     parser.add_argument("--output", type=Path, default=Path("bench-results"))
     chosen = parser.parse_args()
+    if unknown := set(chosen.parts) - set(PARTS):
+        parser.error(f"{', '.join(sorted(unknown))}: right would be some of {', '.join(PARTS)}")
+    chosen.parts = chosen.parts or PARTS
     chosen.output.mkdir(parents=True, exist_ok=True)
     print(f"tagstream {__version__}, Python {platform.python_version()}, {os.cpu_count()} cores")
     with tempfile.TemporaryDirectory(dir=chosen.folder) as name:
@@ -43,6 +47,8 @@ def main() -> None:
             figures["scaling"] = scaling.run(folder, chosen.output / "scaling.png")
         if "start" in chosen.parts:
             figures["start"] = program.start(folder)
+        if "live" in chosen.parts:
+            figures["live"] = live.run(folder)
     (chosen.output / "figures.json").write_text(json.dumps(figures, indent=2))
     print(f"figures in {chosen.output / 'figures.json'}")
 
