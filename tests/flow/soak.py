@@ -17,7 +17,11 @@ SETTLED = 0.25  # the first quarter is left out of the slope: caches fill, spans
 
 @dataclass(frozen=True, slots=True)
 class Soaked:
-    """What was found. slope_mb_per_h: of memory, after the first quarter. counts: of the health."""
+    """What was found.
+
+    slope_mb_per_h: of memory, after the first quarter. growth_mb: from the second third of the
+    time to the last one, by their medians; dropped, gaps, sessions: of the health.
+    """
 
     seconds: float
     tags: int
@@ -26,6 +30,7 @@ class Soaked:
     sessions: int
     memory_mb: float
     slope_mb_per_h: float
+    growth_mb: float
     latency_median_s: float
     latency_p99_s: float
 
@@ -58,6 +63,8 @@ def soak(folder: Path, recording: Path, repeat: int, more: str = "") -> Soaked:
         daemon.stop()
     times, sizes = np.array(memory).T
     late = times > SETTLED * times[-1]
+    third = times.size // 3
+    growth = float(np.median(sizes[2 * third :]) - np.median(sizes[third : 2 * third]))
     slope = float(np.polyfit(times[late], sizes[late], 1)[0]) * 3600
     dropped = sum(int(count) for name, count in health.items() if name.startswith("dropped_"))
     return Soaked(
@@ -68,6 +75,7 @@ def soak(folder: Path, recording: Path, repeat: int, more: str = "") -> Soaked:
         int(health["sessions"]),
         float(sizes[-1]),
         slope,
+        growth,
         float(health["latency_median_s"]),
         float(health["latency_p99_s"]),
     )
