@@ -172,10 +172,10 @@ def _sinks(plan: Plan, files: OneThread, requests: Requests) -> ResultsOnly:
 def _recording(
     plan: Plan, files: OneThread, sinks: ResultsOnly, requests: Requests
 ) -> Recording | None:
-    section = plan.loaded.settings.recording
-    if section is None or not plan.serves:
+    settings = plan.loaded.settings
+    if settings.recording is None or not plan.serves:
         return None
-    return Recording(section, sinks, files, requests)
+    return Recording(settings, sinks, files, requests)
 
 
 def _tap(plan: Plan, recording: Recording | None) -> Tapping:

@@ -13,7 +13,7 @@ from tagstream.outputs.recorder import Recorded, Recorder
 from tagstream.pipeline import Pipeline
 from tagstream.recording import RecordingHeader
 from tagstream.service import Requests
-from tagstream.settings.sections import Recording as Section
+from tagstream.settings import Settings
 from tagstream.supervision.sinks import ResultsOnly
 from tagstream.threads import OneThread
 
@@ -24,12 +24,15 @@ class Recording:
     """The recording of one process: its recorder, and where it writes for each run."""
 
     def __init__(
-        self, settings: Section, sinks: ResultsOnly, files: OneThread, requests: Requests
+        self, settings: Settings, sinks: ResultsOnly, files: OneThread, requests: Requests
     ) -> None:
-        self._settings, self._sinks, self._requests = settings, sinks, requests
+        section = settings.recording
+        assert section is not None
+        self._settings, self._sinks, self._requests = section, sinks, requests
         self._pipeline: Pipeline | None = None
-        self._recorder = Recorder(settings, self._event, free_bytes)
-        self.tap = Tap(self._recorder, files, self._into)
+        self._recorder = Recorder(section, self._event, free_bytes)
+        kind = WaitingTap if settings.conditioning.overload == "wait" else Tap
+        self.tap = kind(self._recorder, files, self._into)
         self.numbers = self._recorder.numbers
 
     def follow(self, pipeline: Pipeline) -> None:
@@ -107,11 +110,15 @@ class Tap:
             self._thread.submit(self._recorder.idle)
             return
         size = 10 * piece.times_ps.size + 100
-        if self._bytes + size > MOST_BYTES:
+        if self._bytes + size > MOST_BYTES and not self._made_room():
             self._thread.submit(self._recorder.lose, piece)
             return
         self._bytes += size
         self._waiting.append((self._thread.submit(self._take, piece), size))
+
+    def _made_room(self) -> bool:
+        """Whether one may wait for the disk until a piece finds room; not here."""
+        return False
 
     def _finish(self) -> None:
         early, self._early = self._early, []
@@ -134,3 +141,14 @@ class Tap:
         early, self._early = self._early, []
         for waiting in early:
             self._recorder.take(waiting)
+
+
+class WaitingTap(Tap):
+    """The same where whoever sends can wait: for a slow disk too, so that all is recorded."""
+
+    def _made_room(self) -> bool:
+        while self._waiting and self._bytes > MOST_BYTES // 2:
+            done, size = self._waiting.popleft()
+            done.exception()  # the recorder tells of it itself
+            self._bytes -= size
+        return True
