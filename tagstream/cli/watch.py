@@ -9,8 +9,6 @@ import click
 
 from tagstream.cli.options import run_argument
 
-ENDED = ("finished", "stopped", "input_broken", "failed", "interrupted")
-
 
 @click.command()
 @run_argument
@@ -26,6 +24,7 @@ def command(run: Path, every: float) -> None:
 
     Only reads; the run goes on whether it is watched or not.
     """
+    from tagstream.outputs.layout import ENDED
     from tagstream.outputs.reader import open_run
     from tagstream.table import format_run
 
