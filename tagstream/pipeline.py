@@ -202,7 +202,6 @@ class Pipeline:
             if self._gap_from_ps is not None:
                 gap_ps, self._gap_from_ps = block.begin_ps - self._gap_from_ps, None
                 self.count_besides(Counters(gaps=1, gap_time_ps=gap_ps))
-                self.sink.event("resume_gap", block.begin_ps, gap_s=gap_ps / PS_PER_S)
             if block.opens and self.counters.gaps:
                 self.sink.event("gap", block.begin_ps, gaps=self.counters.gaps)
             for index, piece in cut_at_slices(block, slice_ps):

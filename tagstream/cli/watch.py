@@ -9,6 +9,8 @@ import click
 
 from tagstream.cli.options import run_argument
 
+ENDED = ("finished", "stopped", "input_broken", "failed", "interrupted")
+
 
 @click.command()
 @run_argument
@@ -24,7 +26,6 @@ def command(run: Path, every: float) -> None:
 
     Only reads; the run goes on whether it is watched or not.
     """
-    from tagstream.outputs.layout import ENDED
     from tagstream.outputs.reader import open_run
     from tagstream.table import format_run
 

@@ -11,18 +11,15 @@ from __future__ import annotations
 import os
 import time
 from collections.abc import Callable
-from math import nan
 from pathlib import Path
 
 import h5py
 import numpy as np
 
 from tagstream.errors import ResultsError
-from tagstream.estimates import Estimate
 from tagstream.outputs import Row, RunHeader
 from tagstream.outputs import layout as at
 from tagstream.outputs.folder import cannot_write
-from tagstream.outputs.reader import open_history
 
 CHUNK_VALUES = 4096  # 32 kB: each flush rewrites the last chunk
 BATCH_ROWS = 64
@@ -33,8 +30,8 @@ SYNC_S = 10.0  # HDF5 never asks for it: how much a power cut may take
 class History:
     """Appends rows, at once or, while they come faster than FLUSH_S, up to 64 together.
 
-    The file appears under its name when it is ready for readers. After a failed write it takes
-    nothing more. unwritten: rows that it then had not written, for the next file.
+    The file appears under its name when it is ready for readers. After a failed write the rest
+    is let go: the failure was told, and the run ends with it.
     """
 
     def __init__(self, path: Path, header: RunHeader, clock: Callable[[], float]) -> None:
@@ -43,9 +40,8 @@ class History:
         self._open = True
         self._rows: list[Row] = []
         self._utc: list[float] = []
-        self._written = 0
-        self.unwritten: list[Row] = []
-        self._columns = integers, numbers = _columns(header)
+        integers = at.integer_columns(header.channels)
+        numbers = at.number_columns(tuple(header.estimates), header.spans)
         if path.exists():
             raise ResultsError(f"{path}: exists already; a new run has a folder of its own")
         fresh = path.with_name(f"{path.name}.tmp")
@@ -74,10 +70,6 @@ class History:
         """Whether a write failed, so that the file takes nothing more."""
         return not self._open
 
-    def takes(self, header: RunHeader) -> bool:
-        """Whether it takes more rows, and has the columns of this header."""
-        return self._open and self._columns == _columns(header)
-
     def add(self, row: Row) -> None:
         """Take a row; flush when a batch is full or the last flush is a while ago."""
         if not self._open:
@@ -105,11 +97,10 @@ class History:
             self._sync()
         except (OSError, RuntimeError) as error:
             self._give_up()
-            self.unwritten = self._rows[max(_rows_in(self._path) - self._written, 0) :]
             raise cannot_write(self._path, error) from error
         finally:
-            self._written += len(self._rows)
-            self._rows, self._utc = [], []
+            self._rows.clear()
+            self._utc.clear()
 
     def close(self) -> None:
         """Write the rest and close the file; from then on it is an ordinary one."""
@@ -144,32 +135,11 @@ class History:
         return [row.slice_index, row.begin_ps, row.end_ps, row.live_time_ps, *row.counts.tolist()]
 
     def _number_row(self, row: Row, utc: float) -> list[float]:
-        """A row that waited may be from before the estimates changed; what it lacks is nan."""
         values = [utc]
-        absent = [nan] * len(at.HISTORY_COLUMNS) * len(self._header.spans)
         for name in self._header.estimates:
-            found = row.estimates.get(name)
-            values += absent if found is None else _numbers(found)
+            for estimate in row.estimates[name]:
+                values += [estimate.value, estimate.lower, estimate.upper]
         return values
-
-
-def _columns(header: RunHeader) -> tuple[list[str], list[str]]:
-    numbers = at.number_columns(tuple(header.estimates), header.spans)
-    return at.integer_columns(header.channels), numbers
-
-
-def _numbers(estimates: tuple[Estimate, ...]) -> list[float]:
-    return [number for e in estimates for number in (e.value, e.lower, e.upper)]
-
-
-def _rows_in(path: Path) -> int:
-    """How many rows readers see in a file that broke; none where they cannot open it."""
-    try:
-        with open_history(path) as file:
-            entry = file[at.ENTRY]
-            return min(int(entry[n].shape[0]) for n in (at.HISTORY_INTEGERS, at.HISTORY_NUMBERS))
-    except (OSError, RuntimeError, KeyError):
-        return 0
 
 
 def _table(entry: h5py.Group, name: str, columns: list[str], dtype: str) -> h5py.Dataset:

@@ -3,8 +3,8 @@
 /                             NXroot, default = "run"
 /run                          NXentry; default = the first tally, else /run/estimates
     title, start_time, end_time (at the end), program_name (version), settings
-    run_uuid, updated_utc, host, pid, restarts, tick, slice_ps, spans; if known origin_ticks,
-    origin_utc, recorded_uuid (of the run that is replayed)
+    run_uuid, updated_utc, host, pid, tick, slice_ps, spans; if known origin_ticks, origin_utc,
+    recorded_uuid (of the run that is replayed)
 /run/<tally>                  NXdata, span "run"; other spans /run/<tally>_<span>, as hbt_10s
 /run/<tally>/by_<key>         of a tally that is split by a key of marks: @key, @now (the value in
     force); value (texts), number (float64, nan for texts), one entry for each value so far
@@ -16,12 +16,7 @@
     profile                   NXdata: what the value of span "run" was made from
 /run/channels/<channel>       per span: spans, begin_ps, end_ps, counts, rate_hz, live_time_ps,
     live_time_s
-/run/health                   counters and state, scalars. Of the files of a run:
-    degraded (1 while results cannot be written), disk_free_bytes, history_rows_waiting (kept in
-    memory), history_rows_lost, snapshots_skipped (of latest.h5), last_disk_error (also when it is
-    over), write_s (what the last latest.h5 took), restarts (how often a process went on with it)
-/run/resume                   what a later process needs besides: state (JSON: first_slice,
-    next_slice, counters, position of the feed), and the sums of channels and clocks
+/run/health                   counters and state, scalars
 /run/marks, /run/mark_table   the newest marks, as in a recording: logs by key, and one table
 /run/truth                    what a simulation knows, scalars
 """
@@ -56,7 +51,6 @@ ESTIMATE_TEXTS = ("interval", "method", "reason", "note")
 HISTORY_COLUMNS = ("value", "lower", "upper")
 HOUR_S = 3600
 MOST_HISTORY = 3600  # points of the history inside latest.h5
-ENDED = ("finished", "stopped", "input_broken", "failed", "interrupted")  # states
 
 
 def unit_of(name: str) -> str | None:

@@ -39,12 +39,10 @@ class PlainFiles:
         """Begin to put a file in place, after the last one is there.
 
         arrived_s: when the oldest tag arrived that it shows for the first time. Raises
-        ResultsError when the last one could not be written; this one is begun all the same.
+        ResultsError when the last one could not be written.
         """
-        try:
-            self.settle()
-        finally:
-            self._under_way = self._pool.submit(self._write, path, content, arrived_s)
+        self.settle()
+        self._under_way = self._pool.submit(self._write, path, content, arrived_s)
 
     def settle(self) -> None:
         """Wait until the last one is in place. Raises ResultsError when it could not be."""

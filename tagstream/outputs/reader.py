@@ -183,7 +183,6 @@ class Run:
         parts = [_history_part(file, wanted) for file in sorted(self.path.glob("history-*.h5"))]
         if not parts:
             raise ResultsError(f"{self.path}: no history-*.h5 in this run")
-        parts = _without_overlap(parts)
         joined = {key: np.concatenate([part[key] for part in parts]) for key in parts[0]}
         return {**joined, "time_s": joined["end_ps"] / PS_PER_S}
 
@@ -302,21 +301,6 @@ def _history_part(path: Path, wanted: Mapping[str, str]) -> dict[str, NDArray[An
             absent = np.full(rows, np.nan)
             found[key] = numbers[:rows, columns[name]] if name in columns else absent
         return found
-
-
-def _without_overlap(parts: list[dict[str, NDArray[Any]]]) -> list[dict[str, NDArray[Any]]]:
-    """Each slice once: a later file prevails.
-
-    A killed process may have written rows that its latest.h5 does not know; one that goes on from
-    there counts these slices again.
-    """
-    first_ps = np.iinfo(np.int64).max
-    kept = []
-    for part in reversed(parts):
-        rows = int(np.searchsorted(part["begin_ps"], np.int64(first_ps)))
-        kept.append({key: values[:rows] for key, values in part.items()})
-        first_ps = kept[-1]["begin_ps"][0] if rows else first_ps
-    return kept[::-1]
 
 
 def open_history(path: Path) -> h5py.File:

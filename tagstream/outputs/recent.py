@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Mapping
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,8 +10,6 @@ from numpy.typing import NDArray
 from tagstream.outputs import Row
 from tagstream.outputs.layout import HOUR_S, MOST_HISTORY
 from tagstream.units import PS_PER_S
-
-Columns = tuple[NDArray[np.float64], ...]  # time_s, value, lower, upper
 
 
 class RecentValues:
@@ -22,18 +19,14 @@ class RecentValues:
     """
 
     def __init__(self, spans: tuple[str, ...], slice_ps: int) -> None:
-        self._slice_ps = slice_ps
         self.span = spans[1] if len(spans) > 1 else spans[0]
         self._index = min(1, len(spans) - 1)
         self._every = max(1, -(-HOUR_S * PS_PER_S // slice_ps // MOST_HISTORY))
         self._rows: deque[tuple[int, dict[str, tuple[float, float, float]]]] = deque()
 
     def add(self, row: Row) -> None:
-        """Take the values of a slice; let go of what is older than an hour.
-
-        A slice that was taken before is left alone: rows may wait to be written.
-        """
-        if row.slice_index % self._every or (self._rows and row.end_ps <= self._rows[-1][0]):
+        """Take the values of a slice; let go of what is older than an hour."""
+        if row.slice_index % self._every:
             return
         found = {
             name: (spans[self._index].value, spans[self._index].lower, spans[self._index].upper)
@@ -43,16 +36,7 @@ class RecentValues:
         while self._rows[0][0] <= row.end_ps - HOUR_S * PS_PER_S:
             self._rows.popleft()
 
-    def restore(self, columns: Mapping[str, Columns]) -> None:
-        """Take what `columns` told, by estimate, in an earlier process of the same run."""
-        by_time: dict[int, dict[str, tuple[float, float, float]]] = {}
-        for name, found in columns.items():
-            for time_s, value, lower, upper in zip(*found, strict=True):
-                end_ps = round(time_s * PS_PER_S / self._slice_ps) * self._slice_ps
-                by_time.setdefault(end_ps, {})[name] = (float(value), float(lower), float(upper))
-        self._rows = deque(sorted(by_time.items(), key=lambda row: row[0]))
-
-    def columns(self, estimate: str) -> Columns:
+    def columns(self, estimate: str) -> tuple[NDArray[np.float64], ...]:
         """time (end of the slice, s of stream time), value, lower, upper: float64, n each."""
         rows = [
             (end_ps / PS_PER_S, *found[estimate])

@@ -18,14 +18,11 @@ import numpy as np
 from tagstream.errors import ResultsError
 from tagstream.marks import Value
 from tagstream.outputs import Arrays, GoingOn
-from tagstream.outputs import layout as at
 from tagstream.outputs.nodes import make_group, put
 from tagstream.outputs.reader import open_run
-from tagstream.outputs.recent import Columns
 from tagstream.recording.layout import Mark
 
 GROUP, STATE = "resume", "state"
-COLUMNS = ("time", *at.HISTORY_COLUMNS)
 LAYOUT = 1
 
 
@@ -92,20 +89,6 @@ def read_resume(folder: Path) -> ResumeState | None:
         str(run.health.get("alerts", "")),
         run.about,
     )
-
-
-def recent_of(folder: Path, span: str) -> dict[str, Columns]:
-    """What latest.h5 tells of the last hour, by estimate; nothing where it is of another span."""
-    found: dict[str, Columns] = {}
-    try:
-        with h5py.File(folder / "latest.h5", "r", locking=False) as file:
-            for name, group in file[at.ENTRY][at.ESTIMATES].items():
-                history = group.get("history")
-                if history is not None and history.attrs["span"] == span:
-                    found[name] = tuple(history[key][()] for key in COLUMNS)
-    except (OSError, KeyError) as error:
-        raise _unreadable(folder, str(error)) from error
-    return found
 
 
 def _unreadable(folder: Path, why: str) -> ResultsError:

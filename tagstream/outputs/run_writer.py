@@ -24,12 +24,10 @@ from tagstream.outputs.log import EventLog
 from tagstream.outputs.mounts import network_file_system
 from tagstream.outputs.plain_files import PlainFiles, Put
 from tagstream.outputs.recent import RecentValues
-from tagstream.outputs.resume import recent_of
 
 # latest.h5 is replaced at most once a second of wall time; a little less, so that slices of one
 # second which end a moment early are not skipped, every other one.
-EARLY = 0.1
-SNAPSHOT_S = 1.0 - EARLY
+SNAPSHOT_S = 0.9
 BYTES_A_SECOND = 1_000_000  # of latest.h5: spares disks that wear, and the time of the HDF5 thread
 NOT_HERE = "rows written there may reach readers late or not at all; a local disk is right"
 
@@ -39,9 +37,8 @@ class RunWriter:
 
     Before anything else happens latest.h5 stands, with the state "starting", and before the link
     points to the run. before: what the folder told of an earlier process of the same run; its
-    latest.h5 stays until the first snapshot. every_s: how often latest.h5 is replaced, absent
-    once a second, less often when it is large. image_bytes: of the last latest.h5. Raises
-    ResultsError when something cannot be written; what was written before stays whole.
+    latest.h5 stays until the first snapshot. Raises ResultsError when something cannot be
+    written; what was written before stays whole.
     """
 
     def __init__(
@@ -54,9 +51,7 @@ class RunWriter:
     ) -> None:
         self.folder, self._header, self._clock = folder, header, clock
         self._meta = _meta(before)
-        self.every_s: float | None = None
-        self.image_bytes = self._skipped = 0
-        self._settings_text = header.settings_text
+        self._period_s = SNAPSHOT_S
         self._recent = RecentValues(header.spans, header.slice_ps)
         self._files = PlainFiles(put, clock)
         with ExitStack() as opened:
@@ -67,9 +62,7 @@ class RunWriter:
             if before is None:
                 self._write_latest(Snapshot((), {}, {"state": "starting"}))
                 self._files.settle()
-            else:
-                self._recent.restore(recent_of(folder.path, self._recent.span))
-            self._asked_at = clock()
+            self._replaced_at = clock()
             replace_file(folder.path / "settings.toml", header.settings_text.encode())
             self._history = History(_next_history(folder.path), header, clock)
             opened.callback(self._history.close)
@@ -84,42 +77,16 @@ class RunWriter:
 
     def numbers(self) -> dict[str, int | float | str]:
         """For the health; from any thread."""
-        skipped = {"snapshots_skipped": self._skipped}
-        return {"restarts": self._meta["restarts"], **skipped, **self._files.numbers()}
-
-    def remember(self, row: Row) -> None:
-        """Show a finished slice in latest.h5 though the history cannot take it now."""
-        self._recent.add(row)
+        return {"restarts": self._meta["restarts"], **self._files.numbers()}
 
     def add_row(self, row: Row) -> None:
         """Append a finished slice to the history."""
         self._recent.add(row)
         self._history.add(row)
 
-    def take_unwritten(self) -> list[Row]:
-        """Rows that a failed write left out, to be added again; told once."""
-        rows, self._history.unwritten = self._history.unwritten, []
-        return rows
-
     def snapshot_due(self) -> bool:
-        """Whether latest.h5 is old enough to be replaced, and the last one is written.
-
-        While a slow disk has not written the last one, the next is skipped, and counted.
-        """
-        now = self._clock()
-        if now - self._asked_at < self._period_s:
-            return False
-        if self._files.busy:
-            self._asked_at = now
-            self._skipped += 1
-            return False
-        return True
-
-    @property
-    def _period_s(self) -> float:
-        if self.every_s is not None:
-            return self.every_s - EARLY * min(self.every_s, 1.0)
-        return max(SNAPSHOT_S, snapshot_period_s(self.image_bytes))
+        """Whether latest.h5 is old enough to be replaced, and the last one is written."""
+        return not self._files.busy and self._clock() - self._replaced_at >= self._period_s
 
     def replace_snapshot(self, snapshot: Snapshot) -> None:
         """Replace latest.h5; history and log are not behind it then."""
@@ -132,39 +99,33 @@ class RunWriter:
         self._files.settle()
 
     def _write_latest(self, snapshot: Snapshot) -> None:
-        self._asked_at = self._clock()
+        self._replaced_at = self._clock()
         meta = {**self._meta, "updated_utc": _utc()}
         image = latest_image(self._header, meta, snapshot, self._recent)
-        self.image_bytes = len(image)
+        self._period_s = max(SNAPSHOT_S, snapshot_period_s(len(image)))
         self._files.put(self.folder.path / "latest.h5", image, snapshot.arrived_s)
 
     def renew(self, header: RunHeader) -> None:
         """Other columns of the history go into a next file; what is known of the run is told."""
-        self._header = header
-        self.begin_again()
+        before, self._header = self._header, header
+        if header.settings_text != before.settings_text:
+            replace_file(self.folder.path / "settings.toml", header.settings_text.encode())
+        if (header.estimates, header.spans) != (before.estimates, before.spans):
+            self._history.close()
+            self._begin_history()
 
     def begin_again(self) -> None:
         """After a failed write: go on in files that are not the broken ones."""
-        text = self._header.settings_text
-        if text != self._settings_text:
-            replace_file(self.folder.path / "settings.toml", text.encode())
-            self._settings_text = text
-        if not self._history.takes(self._header):
-            self._history.close()
-            path = _next_history(self.folder.path)
-            self._history = History(path, self._header, self._clock)
+        self._log.begin_again()
+        if self._history.broken:
+            self._begin_history()
 
-    def flush(self) -> None:
-        """Let readers see all rows that were added."""
-        self._history.flush()
+    def _begin_history(self) -> None:
+        self._history = History(_next_history(self.folder.path), self._header, self._clock)
 
     def event(self, name: str, stream_ps: int | None = None, **fields: Any) -> None:
         """Write a line to log.jsonl."""
         self._log.event(name, stream_ps, fields)
-
-    def retry_log(self) -> None:
-        """Let the next line be tried though the last one could not be written."""
-        self._log.begin_again()
 
     def _say_start(self, before: Mapping[str, Any] | None) -> None:
         about: dict[str, Any] = {"version": __version__, "run_uuid": self._meta["run_uuid"]}
@@ -198,7 +159,7 @@ class RunWriter:
 
 def snapshot_period_s(image_bytes: int) -> float:
     """How often a latest.h5 of so many bytes is replaced: about a megabyte a second."""
-    return (1.0 - EARLY) * image_bytes / BYTES_A_SECOND
+    return 0.9 * image_bytes / BYTES_A_SECOND
 
 
 def _next_history(folder: Path) -> Path:

@@ -8,7 +8,7 @@ from concurrent.futures import Future
 from typing import Any
 
 from tagstream.feeds import IDLE, Arrivals
-from tagstream.outputs.disk import free_bytes
+from tagstream.outputs.patient import free_bytes
 from tagstream.outputs.recorder import Recorded, Recorder
 from tagstream.pipeline import Pipeline
 from tagstream.recording import RecordingHeader

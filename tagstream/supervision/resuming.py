@@ -9,7 +9,6 @@ from typing import Any
 from tagstream.errors import SettingsError
 from tagstream.feeds import ResumePoint
 from tagstream.outputs.folder import RunFolder, newest_run
-from tagstream.outputs.reader import open_run
 from tagstream.outputs.recovery import mend
 from tagstream.outputs.resume import ResumeState, read_resume
 from tagstream.settings.load import LoadedSettings
@@ -67,12 +66,13 @@ def resumption(loaded: LoadedSettings, name: str | None) -> Resumption | None:
 
 
 def require_equal(loaded: LoadedSettings, run: Path) -> None:
-    """Raise SettingsError unless what is counted together is described alike.
-
-    By latest.h5, which stands before anything else does: a process that was killed while it
-    started has left no settings.toml. Raises ResultsError where it cannot be read.
-    """
-    stored = tomllib.loads(open_run(run).about["settings"])
+    """Raise SettingsError unless what is counted together is described alike."""
+    try:
+        stored = tomllib.loads((run / "settings.toml").read_text())
+    except (OSError, tomllib.TOMLDecodeError) as error:
+        raise SettingsError(
+            [f"{run}/settings.toml: cannot be read: {error}; right would be a new run"]
+        ) from None
     now: dict[str, Any] = tomllib.loads(loaded.to_toml())
     problems = [
         f"{table}: differs from that of {run}; right would be the same, or a new run without"

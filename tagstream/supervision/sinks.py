@@ -19,7 +19,6 @@ from tagstream.outputs.run_writer import RunWriter
 from tagstream.settings import Settings
 from tagstream.settings.sections import Alert
 from tagstream.threads import OneThread, SinkInThread
-from tagstream.units import PS_PER_S
 
 OpenFolder = Callable[[], RunFolder]
 Numbers = Mapping[str, int | float | str]
@@ -74,8 +73,6 @@ class ResultsOnly:
     def _open_writer(self, header: RunHeader) -> Sink:
         before, self._before = self._before, None
         self.writer = RunWriter(self._open_folder(), header, before=before)
-        every_ps = self.settings.results.every_ps
-        self.writer.every_s = None if every_ps is None else every_ps / PS_PER_S
         return self.writer
 
     def _alerts(self, header: RunHeader, alerts: list[Alert]) -> Alerts:

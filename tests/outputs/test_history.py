@@ -227,51 +227,6 @@ def test_after_a_failed_write_what_was_flushed_stays_and_the_rest_is_let_go(
     assert tables(path)[0][:, 0].tolist() == [0]
 
 
-@pytest.mark.parametrize("failing_table", [0, 1, 2])
-def test_what_readers_do_not_see_is_kept_for_the_next_file(
-    path: Path,
-    history: History,
-    clock: FakeClock,
-    monkeypatch: pytest.MonkeyPatch,
-    failing_table: int,
-) -> None:
-    """Neither lost nor there twice, wherever in the middle of a batch the disk fails."""
-    clock.now += 1
-    history.add(make_row(0))
-    written, append = [0], module._append
-
-    def fail_at(table: Any, rows: Any) -> None:
-        if written[0] == failing_table:
-            raise OSError(errno.EIO, os.strerror(errno.EIO))
-        written[0] += 1
-        append(table, rows)
-
-    monkeypatch.setattr(module, "_append", fail_at)
-    if failing_table == 2:  # both tables are in the file, the last step fails
-        monkeypatch.setattr(h5py.File, "flush", failing(errno.EIO))
-    history.add(make_row(1))
-    history.add(make_row(2))
-    with pytest.raises(ResultsError):
-        history.flush()
-    monkeypatch.undo()
-    seen = rows_in(path)
-    assert seen == (3 if failing_table == 2 else 1)
-    assert [row.slice_index for row in history.unwritten] == list(range(seen, 3))
-    assert history.broken
-
-
-def test_rows_from_before_the_estimates_changed_have_none(path: Path, clock: FakeClock) -> None:
-    history = History(path, make_header(estimates={"other": "1", "rate_a": "Hz"}), clock)
-    assert history.takes(make_header(estimates={"other": "1", "rate_a": "Hz"}))
-    assert not history.takes(make_header())
-    history.add(make_row(1))
-    history.close()
-    assert not history.takes(make_header(estimates={"other": "1", "rate_a": "Hz"}))
-    (row,) = tables(path)[1]
-    assert np.isnan(row[1:7]).all()
-    assert row[7] == 1001.0
-
-
 def test_an_estimate_may_be_infinite_or_none(path: Path, history: History) -> None:
     wild = make_estimate(value=np.inf, lower=-np.inf, upper=np.nan)
     estimates = {"g2_zero": (wild, wild), "rate_a": (wild, wild)}

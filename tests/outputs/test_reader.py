@@ -162,20 +162,6 @@ def test_files_with_other_columns_are_joined_by_name_and_absent_is_nan(
     assert rate["utc"].size == 6
 
 
-def test_a_slice_that_two_processes_counted_is_told_once_by_the_later_one(
-    folder: Path, run: Run
-) -> None:
-    for number, indices in ((2, (2, 3, 4)), (3, ()), (4, (4, 6))):
-        more = History(folder / f"history-000{number}.h5", make_header(), FakeClock())
-        for index in indices:
-            more.add(make_row(index + number * 100 if index == 4 else index))
-        more.close()
-    # slice 4 stands as row 204 in the second and as row 404 in the fourth file: other begins
-    begins = run.history("rate_a")["begin_ps"] // 10**12
-    assert begins.tolist() == [0, 1, 2, 3, 204]
-    assert run.history("rate_a")["value"].tolist() == [1000.0, 1001.0, 1002.0, 1003.0, 1204.0]
-
-
 def test_a_missing_history_is_told(folder: Path, run: Run) -> None:
     (folder / "history-0001.h5").unlink()
     with pytest.raises(ResultsError, match=r"no history-\*\.h5 in this run"):

@@ -66,29 +66,6 @@ def test_a_pause_of_more_than_an_hour_leaves_the_newest_alone() -> None:
     assert recent.columns("g2_zero")[1].tolist() == [10_000.0]
 
 
-def test_a_slice_is_taken_once() -> None:
-    recent = RecentValues(("run", "10 s"), SLICE_PS)
-    for index in (0, 1, 1, 0, 2):
-        recent.add(short_row(index, SLICE_PS))
-    assert recent.columns("g2_zero")[1].tolist() == [0.0, 1.0, 2.0]
-
-
-def test_a_later_process_goes_on_with_what_was_told() -> None:
-    slice_ps = 3 * 10**9  # such times in seconds are no short binary fractions
-    before = RecentValues(("run", "10 s"), slice_ps)
-    for index in range(0, 4000):
-        before.add(short_row(index, slice_ps))
-    after = RecentValues(("run", "10 s"), slice_ps)
-    after.restore({"g2_zero": before.columns("g2_zero")})
-    assert after._rows == before._rows
-    for index in range(4000, 8000):
-        before.add(short_row(index, slice_ps))
-        after.add(short_row(index, slice_ps))
-    assert after._rows == before._rows
-    after.restore({})
-    assert after.columns("g2_zero")[0].size == 0
-
-
 def test_short_slices_are_thinned_to_what_a_picture_can_show() -> None:
     slice_ps = SLICE_PS // 8  # 28 800 slices an hour
     recent = RecentValues(("run", "10 s"), slice_ps)
